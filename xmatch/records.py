@@ -1,0 +1,575 @@
+"""The nouns that rooms hand to each other. Frozen dataclasses and enums, nothing else.
+
+Units are in the field names. Angles are ICRS degrees, position errors are arcseconds and one
+sigma *per axis*, position angles run east of north. ``nan`` means "not measured" in arrays;
+``None`` means "not given" in single values.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from enum import StrEnum
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+
+
+# ------------------------------------------------------------------------------------------------
+# words
+# ------------------------------------------------------------------------------------------------
+class Waveband(StrEnum):
+    """Part of the spectrum, in order of falling energy; ``object list`` for class compilations."""
+
+    GAMMA = "gamma ray"
+    HARD_XRAY = "hard X-ray"
+    SOFT_XRAY = "soft X-ray"
+    ULTRAVIOLET = "ultraviolet"
+    OPTICAL = "optical"
+    NEAR_INFRARED = "near-infrared"
+    MID_INFRARED = "mid-infrared"
+    RADIO = "radio"
+    OBJECT_LIST = "object list"
+
+
+class Outcome(StrEnum):
+    """What a reply may be called."""
+
+    COUNTERPART = "counterpart"
+    AMBIGUOUS = "ambiguous"
+    CHANCE = "chance"
+    BLANK = "blank"
+    HIDDEN = "hidden"
+    PARTLY_COVERED = "partly covered"
+    NOT_COVERED = "not covered"
+    COVERAGE_UNKNOWN = "coverage unknown"
+    TRUNCATED = "truncated"
+    UNANSWERED = "unanswered"
+    MISREAD = "misread"
+
+    @property
+    def permits_limit(self) -> bool:
+        """Whether an upper limit may be drawn from this outcome."""
+        return self in _PERMITS_LIMIT
+
+
+_PERMITS_LIMIT = frozenset(
+    {
+        Outcome.AMBIGUOUS,
+        Outcome.CHANCE,
+        Outcome.BLANK,
+        Outcome.HIDDEN,
+        Outcome.PARTLY_COVERED,
+        Outcome.COVERAGE_UNKNOWN,
+    }
+)
+
+
+class ReplyStatus(StrEnum):
+    """What came back from one question, before anything astronomical is concluded."""
+
+    WHOLE = "whole"
+    TRUNCATED = "truncated"
+    UNANSWERED = "unanswered"
+    MISREAD = "misread"
+
+
+class Quantity(StrEnum):
+    """What a band's column holds."""
+
+    MAGNITUDE = "magnitude"
+    FLUX_DENSITY = "flux density"
+    BAND_FLUX = "band flux"
+
+
+class MagnitudeSystem(StrEnum):
+    """Magnitude systems are never interchangeable."""
+
+    VEGA = "Vega"
+    AB = "AB"
+    ST = "ST"
+
+
+class LimitKind(StrEnum):
+    """Three different things that are all called upper limit."""
+
+    BOUND = "bound"
+    """From a measurement at the position."""
+    DETECTION = "detection limit"
+    """Faintest source that the procedure would have found."""
+    COMPLETENESS = "completeness limit"
+    """Flux above which the stated fraction of sources is listed."""
+
+
+class LimitMethod(StrEnum):
+    """How a limit was found, most trusted first."""
+
+    OWN_MEASUREMENT = "own measurement"
+    LISTED_LIMIT = "listed limit"
+    LOCAL_ERRORS = "local depth from quoted errors"
+    LOCAL_FAINT_END = "local depth from the faint end"
+    NOMINAL = "nominal depth"
+
+
+class StandingWord(StrEnum):
+    """What the tests leave of a class."""
+
+    RULED_OUT = "ruled out"
+    STRAINED = "strained"
+    OPEN = "open"
+    FAVOURED = "favoured"
+    UNTESTED = "untested"
+
+
+# ------------------------------------------------------------------------------------------------
+# the target
+# ------------------------------------------------------------------------------------------------
+@dataclass(frozen=True)
+class Position:
+    """ICRS position with its error ellipse, one sigma per axis."""
+
+    ra_deg: float
+    dec_deg: float
+    sigma_major_arcsec: float
+    sigma_minor_arcsec: float
+    angle_deg: float = 0.0
+    epoch_yr: float | None = None
+    stated: str = ""
+    """Position and error in the user's own words."""
+
+
+@dataclass(frozen=True)
+class Distance:
+    """Allowed distance range in parsec."""
+
+    low_pc: float
+    high_pc: float
+    origin: str = ""
+
+
+@dataclass(frozen=True)
+class Spin:
+    """Period and what is known of its derivative (dimensionless, s/s)."""
+
+    period_s: float
+    derivative: float | None = None
+    derivative_limit: float | None = None
+    derivative_origin: str = ""
+    may_be_orbital: bool = False
+
+
+@dataclass(frozen=True)
+class Pulse:
+    """One pulse, or the typical one: peak flux density and equivalent width."""
+
+    nu_hz: float
+    peak_jy: float
+    width_s: float
+
+
+@dataclass(frozen=True)
+class Target:
+    """Everything the user knows about the object."""
+
+    name: str
+    position: Position
+    distance: Distance | None = None
+    dm_pc_cm3: float | None = None
+    column_cm2: float | None = None
+    column_origin: str = ""
+    av_mag: float | None = None
+    av_origin: str = ""
+    spin: Spin | None = None
+    pulses: tuple[Pulse, ...] = ()
+    note: str = ""
+
+
+# ------------------------------------------------------------------------------------------------
+# bands
+# ------------------------------------------------------------------------------------------------
+@dataclass(frozen=True)
+class Band:
+    """One band of one catalog, in common physical terms.
+
+    Attributes
+    ----------
+    nu_low_hz, nu_high_hz : float
+        Edges of the band as frequencies.
+    nu_hz : float
+        Where a flux density is quoted: pivot, or geometric centre of an energy band.
+    unit : str
+        Unit of the catalog's column, as astropy parses it: ``mag``, ``mJy``, ``erg s-1 cm-2``.
+    zero_point_jy : float or None
+        Flux density of magnitude zero, for magnitudes.
+    assumed_index, assumed_column_cm2 : float or None
+        Photon index and column the catalog folded into its band flux.
+    depth, depth_n_sigma, depth_completeness
+        Nominal depth in the column's unit and what it means: either a threshold of n sigma
+        or a completeness fraction; None where no depth is known.
+    """
+
+    catalog_id: str
+    name: str
+    waveband: Waveband
+    quantity: Quantity
+    unit: str
+    nu_low_hz: float
+    nu_high_hz: float
+    nu_hz: float
+    system: MagnitudeSystem | None = None
+    zero_point_jy: float | None = None
+    assumed_index: float | None = None
+    assumed_column_cm2: float | None = None
+    depth: float | None = None
+    depth_n_sigma: float | None = None
+    depth_completeness: float | None = None
+    depth_source: str = ""
+    flux_scale_error: float = 0.0
+    source: str = ""
+
+    @property
+    def label(self) -> str:
+        """``catalog band``, for people."""
+        return f"{self.catalog_id} {self.name}"
+
+    @property
+    def is_xray(self) -> bool:
+        """Whether the band lies in X-rays, where photoelectric absorption applies."""
+        return self.waveband in (Waveband.SOFT_XRAY, Waveband.HARD_XRAY)
+
+
+# ------------------------------------------------------------------------------------------------
+# asking
+# ------------------------------------------------------------------------------------------------
+@dataclass(frozen=True)
+class WantedColumn:
+    """A column the reply must (or may) hold, with the unit it must be convertible to."""
+
+    name: str
+    unit: str | None = None
+    required: bool = True
+    low: float | None = None
+    """Smallest plausible value, in ``unit``."""
+    high: float | None = None
+    """Largest plausible value, in ``unit``."""
+
+
+@dataclass(frozen=True)
+class Question:
+    """One cone put to one table of one catalog."""
+
+    catalog_id: str
+    release: str
+    table: str
+    """Short name of the table inside the catalog file."""
+    protocol: str
+    """``cone`` or ``vizier``."""
+    address: str
+    remote_table: str
+    """The archive's own name of the table; empty where the address says it all."""
+    ra_deg: float
+    dec_deg: float
+    radius_arcsec: float
+    columns: tuple[WantedColumn, ...]
+    row_limit: int
+
+
+@dataclass(frozen=True)
+class Column:
+    """One column of a reply: values, unit as served, and which values are missing."""
+
+    values: NDArray[np.generic]
+    unit: str | None
+    missing: Bools
+
+
+@dataclass(frozen=True)
+class Reply:
+    """What one question brought, already judged on its raw bytes.
+
+    ``columns`` is None unless ``status`` is whole or truncated.
+    """
+
+    question: Question
+    status: ReplyStatus
+    detail: str
+    """What was seen, in words; for a failure: the value seen, what is allowed, what to do."""
+    request: str
+    """Exactly what was sent: method, address, body."""
+    asked_at: str
+    """UTC, ISO 8601 with ``Z``."""
+    elapsed_s: float
+    columns: Mapping[str, Column] | None = None
+    n_rows: int = 0
+    http_status: int | None = None
+    retry_after_s: float | None = None
+    sha256: str = ""
+    reply_bytes: int = 0
+    tries: int = 1
+    client: str = ""
+    """Versions of what asked and decoded."""
+
+
+@dataclass(frozen=True)
+class Photometry:
+    """Values of one band for all rows of a table, in the band's unit."""
+
+    value: Floats
+    error: Floats
+    is_limit: Bools
+
+
+@dataclass(frozen=True)
+class Rows:
+    """Rows of one or more tables of one catalog, normalised at the door. All arrays have length n.
+
+    Proper motions include the cos(dec) factor; ``nan`` where there is none.
+    """
+
+    key: tuple[str, ...]
+    ra_deg: Floats
+    dec_deg: Floats
+    sigma_major_arcsec: Floats
+    sigma_minor_arcsec: Floats
+    angle_deg: Floats
+    epoch_yr: Floats
+    pm_ra_mas_yr: Floats
+    pm_dec_mas_yr: Floats
+    pm_ra_error_mas_yr: Floats
+    pm_dec_error_mas_yr: Floats
+    flux: Mapping[str, Photometry] = field(default_factory=dict)
+    raw: tuple[Mapping[str, object], ...] = ()
+    """The rows as served, for the store; empty when read back for a warm answer."""
+
+    def __len__(self) -> int:
+        return len(self.key)
+
+
+@dataclass(frozen=True)
+class Search:
+    """One stored question and its judged reply. ``search_id`` is the store's."""
+
+    search_id: int
+    catalog_id: str
+    release: str
+    table: str
+    asked_at: str
+    status: ReplyStatus
+    detail: str
+    request: str
+    ra_deg: float
+    dec_deg: float
+    radius_arcsec: float
+    n_rows: int
+    elapsed_s: float = 0.0
+    http_status: int | None = None
+    retry_after_s: float | None = None
+    sha256: str = ""
+    from_store: bool = False
+    """True when this look did not ask again."""
+
+
+# ------------------------------------------------------------------------------------------------
+# what was found
+# ------------------------------------------------------------------------------------------------
+@dataclass(frozen=True)
+class Measured:
+    """One band of one candidate, as the catalog gives it."""
+
+    band: Band
+    value: float
+    error: float
+    is_limit: bool
+
+
+@dataclass(frozen=True)
+class Candidate:
+    """A catalog row compatible with the target's position."""
+
+    catalog_id: str
+    key: str
+    ra_deg: float
+    dec_deg: float
+    separation_arcsec: float
+    normalised_separation: float
+    tail: float
+    """Probability that a true match lies at least this far out."""
+    chance: float
+    """Probability of an unrelated row at least this close (in normalised separation)."""
+    odds: float
+    """Posterior probability of being the counterpart, all rows of the catalog considered."""
+    photometry: tuple[Measured, ...] = ()
+
+
+@dataclass(frozen=True)
+class Limit:
+    """How faint the target must be in one band. Value in the band's own unit, as observed."""
+
+    band: Band
+    value: float
+    kind: LimitKind
+    confidence: float
+    """One-sided confidence, or detection probability of a completeness limit."""
+    n_sigma: float | None
+    method: LimitMethod
+    note: str
+    """How it was found, with the numbers, and which better methods were passed over and why."""
+    search_ids: tuple[int, ...] = ()
+    verified_depth: bool = True
+    """False when it rests on a depth that no published text was checked for."""
+    flag: str = ""
+    """``coverage unproven``, ``raised by a neighbour``, ``covers 60 % of the error region`` ..."""
+
+
+@dataclass(frozen=True)
+class PhysicalLimit:
+    """A limit in the common physical terms. Fluxes in erg s^-1 cm^-2, luminosities in erg s^-1.
+
+    ``corrected_*`` is None where the band is blind: too little light gets through to correct.
+    Luminosity tuples hold the low, median and high distance of the prior, in this order, and
+    are empty without a distance.
+    """
+
+    limit: Limit
+    flux_density_jy: float | None
+    """At ``band.nu_hz``, as observed."""
+    flux_cgs: float
+    """Band flux for X-rays, nu F_nu otherwise, as observed (absorbed)."""
+    transmitted: float
+    """Fraction of the light that gets through the column or the dust."""
+    corrected_flux_cgs: float | None
+    luminosity_erg_s: tuple[float, ...]
+    distance_pc: tuple[float, ...]
+    note: str
+    """Spectrum, column, extinction used."""
+
+
+@dataclass(frozen=True)
+class Finding:
+    """What one catalog says about the target."""
+
+    catalog_id: str
+    title: str
+    waveband: Waveband
+    release: str
+    outcome: Outcome
+    why: str
+    searches: tuple[Search, ...]
+    coverage_fraction: float | None
+    n_rows: int = 0
+    n_compatible: int = 0
+    density_per_deg2: float | None = None
+    expected_chance: float | None = None
+    """Expected number of unrelated rows inside the compatible region."""
+    candidates: tuple[Candidate, ...] = ()
+    limits: tuple[Limit, ...] = ()
+    age_s: float | None = None
+    """Age of the oldest answer used."""
+
+
+# ------------------------------------------------------------------------------------------------
+# what it means
+# ------------------------------------------------------------------------------------------------
+@dataclass(frozen=True)
+class DeathLine:
+    """One death-line model held against the spin figures."""
+
+    model: str
+    log_derivative: float
+    """log10 of the period derivative on the line at this period."""
+    distance_dex: float
+    """log10(derivative) minus the line: positive above the line."""
+    says: str
+    """``above``, ``below`` or ``nothing`` (an upper limit above the line)."""
+    source: str
+
+
+@dataclass(frozen=True)
+class RotationBudget:
+    """Spin-down figures for one kind of star. All are upper limits when ``is_limit``."""
+
+    star: str
+    inertia_g_cm2: float
+    radius_cm: float
+    power_erg_s: float
+    field_equator_g: float
+    field_pole_g: float
+    light_cylinder_field_g: float
+    is_limit: bool
+
+
+@dataclass(frozen=True)
+class SpinFigures:
+    """What period and derivative say, model by model."""
+
+    period_s: float
+    derivative: float | None
+    derivative_is_limit: bool
+    age_yr: float | None
+    light_cylinder_cm: float
+    budgets: tuple[RotationBudget, ...]
+    death_lines: tuple[DeathLine, ...]
+    conditional: str
+    """Non-empty when the figures hold only if the period is a spin period."""
+    note: str
+
+
+@dataclass(frozen=True)
+class ClassTest:
+    """One prediction of one class held against one limit, detection or spin figure."""
+
+    class_id: str
+    test: str
+    sentence: str
+    """The numbers compared, with units."""
+    survival: float | None
+    """Fraction of the class that passes; None for a test that could not be made or only informs."""
+    survival_low: float | None
+    survival_high: float | None
+    source: str
+    informs_only: bool = False
+
+
+@dataclass(frozen=True)
+class Standing:
+    """What the tests leave of a class, with the range over the variants of the assumptions."""
+
+    class_id: str
+    title: str
+    word: StandingWord
+    reason: str
+    survival: float | None
+    survival_low: float | None
+    """Lowest over the variants, binomial error included."""
+    survival_high: float | None
+    tests: tuple[ClassTest, ...]
+    variants: Mapping[str, float] = field(default_factory=dict)
+    """Survival under each variant of the assumptions."""
+    would_overturn: str = ""
+
+
+@dataclass(frozen=True)
+class Look:
+    """The whole answer about one target, ready to be reported."""
+
+    target: Target
+    made_at: str
+    version: str
+    run_id: int
+    digest: str
+    """Content hash of the assumptions."""
+    assumptions: Mapping[str, object]
+    findings: tuple[Finding, ...]
+    limits: tuple[PhysicalLimit, ...]
+    spin: SpinFigures | None
+    standings: tuple[Standing, ...]
+    expected_chance: float
+    """Expected unrelated rows over all catalogs searched."""
+    n_asked: int
+    n_from_store: int
+    offline: bool
+    remarks: tuple[str, ...] = ()
+    store: str = ""
