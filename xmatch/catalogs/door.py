@@ -1,0 +1,249 @@
+"""The door: a judged reply becomes rows in common units, or is refused.
+
+Everything that differs between catalogs ends here: names, units, the meaning of position errors,
+epoch scales, limits stored in flux columns, duplicate listings.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from xmatch.catalogs.model import BandColumns, Catalog, EpochScale, ErrorMeaning
+from xmatch.errors import MisreadError
+from xmatch.match.ellipse import axes, sigma_from_radial, sigma_from_radius
+from xmatch.records import Bools, Column, Floats, Photometry, Quantity, Reply, Rows
+
+ARCSEC_PER_SECOND_OF_TIME = 15.0
+MJD_J2000 = 51544.5
+JD_MJD = 2400000.5
+DAYS_PER_YEAR = 365.25
+
+
+def normalise(catalog: Catalog, reply: Reply) -> Rows:
+    """Turn the columns of a whole or truncated reply into rows in common units.
+
+    Parameters
+    ----------
+    catalog : Catalog
+        The catalog file the reply answers to.
+    reply : Reply
+        A reply whose raw bytes have been judged; its ``columns`` must be present.
+
+    Returns
+    -------
+    Rows
+        Rows with a finite position; ``nan`` where a value is missing. Rows that the catalog flags as
+        second listings are left out.
+
+    Raises
+    ------
+    MisreadError
+        When a column is missing or a unit cannot be turned into ours: nothing is guessed.
+    """
+    if reply.columns is None:
+        raise MisreadError(f"{catalog.id}: the reply holds no columns ({reply.detail}); ask again")
+    door = _Door(catalog, reply.columns)
+    return door.rows()
+
+
+class _Door:
+    def __init__(self, catalog: Catalog, columns: Mapping[str, Column]) -> None:
+        self.catalog = catalog
+        self.columns = columns
+        # archives change the case of names between releases; ours is the file's
+        self.by_lower = {name.lower(): name for name in columns}
+
+    def column(self, name: str) -> Column:
+        found = self.by_lower.get(name.lower())
+        if found is None:
+            raise MisreadError(
+                f"{self.catalog.id}: column {name!r} is not in the reply, which holds {', '.join(self.columns)}; "
+                "the catalog file needs an update"
+            )
+        return self.columns[found]
+
+    def floats(self, name: str, unit: str | None) -> Floats:
+        """Values of a column as floats in ``unit`` (None: as served), missing ones ``nan``."""
+        column = self.column(name)
+        try:
+            values = np.asarray(column.values, dtype=np.float64).copy()
+        except (TypeError, ValueError):
+            raise MisreadError(f"{self.catalog.id}: column {name!r} holds text where numbers are expected") from None
+        values[np.asarray(column.missing, dtype=bool)] = np.nan
+        if unit is not None:
+            values *= self.factor(name, column.unit, unit)
+        return values
+
+    def factor(self, name: str, served: str | None, wanted: str) -> float:
+        """Return what turns the served unit into the wanted one; a missing unit is a fault, not a guess."""
+        import astropy.units as u
+
+        if served == wanted:
+            return 1.0
+        try:
+            if not served:
+                raise ValueError("no unit")
+            return float(u.Unit(served).to(u.Unit(wanted)))
+        except (ValueError, TypeError, u.UnitConversionError):
+            raise MisreadError(
+                f"{self.catalog.id}: column {name!r} came in {served!r}, which cannot be read as {wanted}; "
+                "the archive changed or the catalog file is wrong"
+            ) from None
+
+    def angle_arcsec(self, name: str, dec_deg: Floats | None = None) -> Floats:
+        """An error column in arcsec. Seconds of time are allowed for a right-ascension error."""
+        column = self.column(name)
+        if column.unit in ("s", "seconds") and dec_deg is not None:
+            return self.floats(name, None) * ARCSEC_PER_SECOND_OF_TIME * np.cos(np.radians(dec_deg))
+        return self.floats(name, "arcsec")
+
+    def rows(self) -> Rows:
+        catalog = self.catalog
+        ra_deg = self.floats(catalog.ra, "deg")
+        dec_deg = self.floats(catalog.dec, "deg")
+        keep = np.isfinite(ra_deg) & np.isfinite(dec_deg)
+        for rule in catalog.drop:
+            keep &= ~(self.floats(rule.column, None) >= rule.at_least)
+        major, minor, angle = self.ellipse(dec_deg)
+        pm = self.motion(dec_deg)
+        key = self.column(catalog.key)
+        return Rows(
+            key=tuple(_as_text(value) for value in np.asarray(key.values)[keep]),
+            ra_deg=ra_deg[keep] % 360.0,
+            dec_deg=dec_deg[keep],
+            sigma_major_arcsec=major[keep],
+            sigma_minor_arcsec=minor[keep],
+            angle_deg=angle[keep],
+            epoch_yr=self.epoch(len(ra_deg))[keep],
+            pm_ra_mas_yr=pm[0][keep],
+            pm_dec_mas_yr=pm[1][keep],
+            pm_ra_error_mas_yr=pm[2][keep],
+            pm_dec_error_mas_yr=pm[3][keep],
+            flux={columns.band.name: self.photometry(columns, keep) for columns in catalog.bands},
+            raw=self.raw(keep),
+        )
+
+    def ellipse(self, dec_deg: Floats) -> tuple[Floats, Floats, Floats]:
+        """One-sigma semi-axes and angle, systematic floor added; a missing error falls back to the worst listed."""
+        error = self.catalog.error
+        zero = np.zeros_like(dec_deg)
+        if error.meaning is ErrorMeaning.NONE:
+            major, minor, angle = zero, zero, zero
+        elif error.meaning is ErrorMeaning.ELLIPSE:
+            major, minor = (self.angle_arcsec(name) for name in error.columns[:2])
+            angle = self.floats(error.columns[2], "deg")
+        elif error.meaning is ErrorMeaning.PER_AXIS:
+            sigma_ra = self.angle_arcsec(error.columns[0], dec_deg)
+            sigma_dec = self.angle_arcsec(error.columns[1])
+            rho = self.floats(error.correlation, None) if error.correlation else zero
+            major, minor, angle = axes(sigma_ra**2, sigma_dec**2, rho * sigma_ra * sigma_dec)
+        else:
+            radius = self.angle_arcsec(error.columns[0])
+            sigma = (
+                sigma_from_radius(radius, error.level) if error.level is not None else sigma_from_radial(radius)
+            )
+            major, minor, angle = sigma, sigma.copy(), zero
+        major, minor = (_fill_with_worst(axis) for axis in (np.asarray(major), np.asarray(minor)))
+        floor = error.floor_arcsec
+        return np.hypot(major, floor), np.hypot(minor, floor), np.nan_to_num(np.asarray(angle), nan=0.0)
+
+    def motion(self, dec_deg: Floats) -> tuple[Floats, Floats, Floats, Floats]:
+        nothing = np.full_like(dec_deg, np.nan)
+        motion = self.catalog.motion
+        if motion is None:
+            return nothing, nothing.copy(), nothing.copy(), nothing.copy()
+        cos = 1.0 if motion.cosdec else np.cos(np.radians(dec_deg))
+        unit = "mas / yr"
+        ra_error = self.floats(motion.ra_error, unit) * cos if motion.ra_error else nothing
+        dec_error = self.floats(motion.dec_error, unit) if motion.dec_error else nothing.copy()
+        return self.floats(motion.ra, unit) * cos, self.floats(motion.dec, unit), ra_error, dec_error
+
+    def epoch(self, n: int) -> Floats:
+        facts = self.catalog.epoch
+        default = np.full(n, facts.value_yr)
+        if facts.column is None:
+            return default
+        value = self.floats(facts.column, None)
+        if facts.scale is EpochScale.JD:
+            value = 2000.0 + (value - JD_MJD - MJD_J2000) / DAYS_PER_YEAR
+        elif facts.scale is EpochScale.MJD:
+            value = 2000.0 + (value - MJD_J2000) / DAYS_PER_YEAR
+        return np.where(np.isfinite(value), value, default)
+
+    def photometry(self, columns: BandColumns, keep: Bools) -> Photometry:
+        unit = columns.band.unit
+        value = self.floats(columns.value, unit)
+        if columns.band.quantity is not Quantity.MAGNITUDE:
+            # a listed flux of zero or less is a missing measurement in a source list
+            value[~(value > 0.0)] = np.nan
+        error = self.floats(columns.error, unit) if columns.error else np.full_like(value, np.nan)
+        is_limit = np.zeros(len(value), dtype=bool)
+        if columns.limit_flag is not None:
+            flag = columns.limit_flag
+            letters = [_as_text(v)[flag.place : flag.place + 1] for v in self.column(flag.column).values]
+            is_limit = np.array([bool(letter) and letter in flag.letters for letter in letters], dtype=bool)
+        return Photometry(value=value[keep], error=error[keep], is_limit=is_limit[keep])
+
+    def raw(self, keep: Bools) -> tuple[Mapping[str, object], ...]:
+        """The rows as served, missing values as None, ready to be stored as text."""
+        names = list(self.columns)
+        listed = [
+            [None if gone else _plain(value) for value, gone in zip(column.values, column.missing, strict=True)]
+            for column in self.columns.values()
+        ]
+        rows: Iterable[tuple[object, ...]] = zip(*listed, strict=True)
+        return tuple(dict(zip(names, row, strict=True)) for row, kept in zip(rows, keep, strict=True) if kept)
+
+
+def _fill_with_worst(axis: Floats) -> Floats:
+    """A row without a listed error is as uncertain as the worst of its neighbours, never perfect."""
+    listed = axis[np.isfinite(axis) & (axis > 0.0)]
+    worst = float(listed.max()) if listed.size else 0.0
+    return np.where(np.isfinite(axis) & (axis > 0.0), axis, worst)
+
+
+def _plain(value: object) -> object:
+    return value.item() if isinstance(value, np.generic) else value
+
+
+def _as_text(value: object) -> str:
+    if isinstance(value, bytes):
+        return value.decode("utf-8", "replace").strip()
+    return str(_plain(value)).strip()
+
+
+def join(parts: Iterable[Rows]) -> Rows:
+    """Put the rows of several tables of one catalog together, in order. No parts give empty rows."""
+    listed = list(parts)
+    if len(listed) == 1:
+        return listed[0]
+
+    def stack(name: str) -> NDArray[np.float64]:
+        return np.concatenate([getattr(part, name) for part in listed]) if listed else np.empty(0)
+
+    bands = list(dict.fromkeys(name for part in listed for name in part.flux))
+    return Rows(
+        key=tuple(key for part in listed for key in part.key),
+        ra_deg=stack("ra_deg"),
+        dec_deg=stack("dec_deg"),
+        sigma_major_arcsec=stack("sigma_major_arcsec"),
+        sigma_minor_arcsec=stack("sigma_minor_arcsec"),
+        angle_deg=stack("angle_deg"),
+        epoch_yr=stack("epoch_yr"),
+        pm_ra_mas_yr=stack("pm_ra_mas_yr"),
+        pm_dec_mas_yr=stack("pm_dec_mas_yr"),
+        pm_ra_error_mas_yr=stack("pm_ra_error_mas_yr"),
+        pm_dec_error_mas_yr=stack("pm_dec_error_mas_yr"),
+        flux={
+            name: Photometry(
+                value=np.concatenate([part.flux[name].value for part in listed]),
+                error=np.concatenate([part.flux[name].error for part in listed]),
+                is_limit=np.concatenate([part.flux[name].is_limit for part in listed]),
+            )
+            for name in bands
+        },
+        raw=tuple(row for part in listed for row in part.raw),
+    )

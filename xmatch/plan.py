@@ -1,0 +1,138 @@
+"""Which searches a look needs, and which of them the store can already answer."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
+from datetime import UTC, datetime
+
+from xmatch.assumptions import Assumptions
+from xmatch.catalogs.model import Catalog, Table
+from xmatch.limits.coverage import touches
+from xmatch.match.motion import target_motion_sigma_arcsec
+from xmatch.match.separation import separation_arcsec
+from xmatch.records import Position, Question, ReplyStatus, Search, Target
+
+FASTEST_STAR_ARCSEC_YR = 10.4
+"""Barnard's star, 1916AJ.....29..181B and Gaia DR3: nothing outside the solar system moves faster."""
+AGE_LIMIT_DAYS = {"frozen": 180.0, "yearly": 90.0, "monthly": 14.0, "rolling": 3.0}
+"""Age at which an answer is asked for again, by the catalog's cadence (our choice; an option overrides it)."""
+SAME_CENTRE_ARCSEC = 0.1
+"""A stored cone answers a new one only when its centre agrees this well (our choice)."""
+DENSITY_RING = 4.0
+"""The cone reaches at least this many times the compatible radius, so that a ring is left for the density."""
+
+
+@dataclass(frozen=True)
+class Step:
+    """One search of the plan.
+
+    ``known`` is the stored search that answers it, if any; ``ask`` says whether the archive is to be
+    asked again; ``least_radius_arcsec`` is the smallest cone that still answers the question.
+    """
+
+    catalog: Catalog
+    table: Table
+    question: Question
+    least_radius_arcsec: float
+    known: Search | None
+    ask: bool
+
+
+def make_plan(
+    target: Target,
+    catalogs: Mapping[str, Catalog],
+    stored: Iterable[Search],
+    *,
+    assumptions: Assumptions,
+    now: datetime,
+    offline: bool = False,
+    again: bool = False,
+    age_limit_days: float | None = None,
+) -> tuple[Step, ...]:
+    """Return one step per table that may hold rows around the target.
+
+    Parameters
+    ----------
+    target : Target
+        What is looked at.
+    catalogs : mapping of str to Catalog
+        The registry; every catalog in it gets at least one step.
+    stored : iterable of Search
+        Whole searches of this target that the store holds.
+    assumptions : Assumptions
+        For the width of the error region.
+    now : datetime
+        The present, time-zone aware.
+    offline : bool
+        Never ask; any age will do.
+    again : bool
+        Ask even when the store has a fresh answer.
+    age_limit_days : float, optional
+        Overrides the age limit of every catalog.
+    """
+    position = target.position
+    stored = list(stored)
+    steps = []
+    for catalog in catalogs.values():
+        least = least_radius_arcsec(target, catalog, assumptions)
+        radius = max(catalog.neighbourhood_arcsec, DENSITY_RING * least)
+        limit_days = AGE_LIMIT_DAYS[catalog.refresh] if age_limit_days is None else age_limit_days
+        tables = [
+            table
+            for table in catalog.tables
+            if table.holds is None or touches(position.ra_deg, position.dec_deg, radius, table.holds)
+        ]
+        for table in tables:
+            question = catalog.question(table, position.ra_deg, position.dec_deg, radius)
+            known = _answer_in_store(question, least, stored)
+            fresh = known is not None and age_s(known, now) < limit_days * 86400.0
+            steps.append(Step(catalog, table, question, least, known, ask=not offline and (again or not fresh)))
+    return tuple(steps)
+
+
+def least_radius_arcsec(target: Target, catalog: Catalog, assumptions: Assumptions) -> float:
+    """Smallest cone that cannot miss the counterpart: error region, fast stars, a moving target."""
+    position = target.position
+    gap_yr = 0.0 if position.epoch_yr is None else abs(position.epoch_yr - catalog.epoch.value_yr)
+    region = assumptions.compatible_sigma * max(position.sigma_major_arcsec, 1.0)
+    stars = FASTEST_STAR_ARCSEC_YR * gap_yr if catalog.motion is not None else 0.0
+    own = 0.0
+    if assumptions.target_speed_km_s > 0.0 and target.distance is not None:
+        own = assumptions.compatible_sigma * float(
+            target_motion_sigma_arcsec(assumptions.target_speed_km_s, target.distance.low_pc, gap_yr)
+        )
+    return region + stars + own
+
+
+def smaller(question: Question, least_radius: float) -> Question | None:
+    """Return the same question over half the radius, or None when that could miss the counterpart."""
+    radius = question.radius_arcsec / 2.0
+    return replace(question, radius_arcsec=radius) if radius >= least_radius else None
+
+
+def age_s(search: Search, now: datetime) -> float:
+    """Age of a search in seconds, never negative."""
+    asked = datetime.fromisoformat(search.asked_at.replace("Z", "+00:00"))
+    return max(0.0, (now - asked.astimezone(UTC)).total_seconds())
+
+
+def _answer_in_store(question: Question, least: float, stored: list[Search]) -> Search | None:
+    """The latest whole search that covers the question: same table and release, same centre, wide enough."""
+    fitting = [
+        search
+        for search in stored
+        if search.status is ReplyStatus.WHOLE
+        and (search.catalog_id, search.release, search.table)
+        == (question.catalog_id, question.release, question.table)
+        and search.radius_arcsec >= least
+        and separation_arcsec(search.ra_deg, search.dec_deg, question.ra_deg, question.dec_deg) < SAME_CENTRE_ARCSEC
+    ]
+    return max(fitting, key=lambda search: (search.asked_at, search.search_id)) if fitting else None
+
+
+def error_region_text(position: Position, k: float) -> str:
+    """The error region in words."""
+    return (
+        f"{k:.2f} sigma ellipse of {k * position.sigma_major_arcsec:.2g} x {k * position.sigma_minor_arcsec:.2g} arcsec"
+    )

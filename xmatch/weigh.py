@@ -1,0 +1,255 @@
+"""From rows to findings: what each catalog says, and how faint the target must be where it says nothing.
+
+Pure composition of the match and limits rooms: no store, no network, no clock.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from xmatch.assumptions import Assumptions
+from xmatch.catalogs.model import Catalog
+from xmatch.limits.coverage import covered_fraction
+from xmatch.limits.depth import limit_for_band
+from xmatch.limits.hiding import raise_limit
+from xmatch.limits.pulses import contains_whole_pulse_probability, pulse_peak_limit
+from xmatch.match.chance import chance_within
+from xmatch.match.decide import Weighed, candidates, outcome, weigh
+from xmatch.records import (
+    Finding,
+    Limit,
+    Outcome,
+    Quantity,
+    ReplyStatus,
+    Rows,
+    Search,
+    Target,
+    Waveband,
+)
+
+COVERED = 1.0 - 1.0e-9
+_FAILED = {
+    ReplyStatus.TRUNCATED: Outcome.TRUNCATED,
+    ReplyStatus.UNANSWERED: Outcome.UNANSWERED,
+    ReplyStatus.MISREAD: Outcome.MISREAD,
+}
+
+
+@dataclass(frozen=True)
+class Evidence:
+    """Everything known of one catalog around the target.
+
+    ``failed`` is the failed attempt of this look, if asking went wrong; ``searches`` are the whole
+    searches whose rows are used, possibly older ones.
+    """
+
+    catalog: Catalog
+    searches: tuple[Search, ...]
+    rows: Rows | None
+    failed: Search | None
+    age_s: float | None
+    complete: bool = True
+    """Whether every table that may hold rows has a whole answer."""
+
+
+def findings(target: Target, evidence: Sequence[Evidence], assumptions: Assumptions) -> tuple[Finding, ...]:
+    """Return what each catalog says about the target, in the order given.
+
+    The outcome of a catalog depends on the others only through the chance alignments expected over
+    all catalogs searched.
+    """
+    distance_pc = None
+    if target.distance is not None:
+        distance_pc = float(np.sqrt(target.distance.low_pc * target.distance.high_pc))
+    weighed: dict[str, Weighed] = {}
+    for item in evidence:
+        if item.rows is not None and item.complete:
+            radius = min(search.radius_arcsec for search in item.searches)
+            weighed[item.catalog.id] = weigh(
+                target.position, item.rows, radius_arcsec=radius, assumptions=assumptions, distance_pc=distance_pc
+            )
+    return tuple(
+        _finding(target, item, weighed.get(item.catalog.id), weighed, assumptions) for item in evidence
+    )
+
+
+def _global_chance(own: Weighed, all_weighed: Mapping[str, Weighed]) -> float:
+    """Chance that any catalog searched shows an unrelated row as good as this catalog's best one.
+
+    For the best row the expected number of unrelated rows at least as close is known in its own catalog;
+    the other catalogs are trials of the same kind (Sidak, independent trials).
+    """
+    best = int(np.argmax(own.odds))
+    p_best = float(own.chance[best])
+    return 1.0 - (1.0 - p_best) ** max(1, len(all_weighed))
+
+
+def _finding(
+    target: Target,
+    item: Evidence,
+    own: Weighed | None,
+    all_weighed: Mapping[str, Weighed],
+    assumptions: Assumptions,
+) -> Finding:
+    catalog = item.catalog
+    k = assumptions.compatible_sigma
+    fraction = covered_fraction(target.position, catalog.coverage, k)
+    base = Finding(
+        catalog_id=catalog.id,
+        title=catalog.title,
+        waveband=catalog.waveband,
+        release=catalog.release,
+        outcome=Outcome.UNANSWERED,
+        why="not asked yet: nothing in the store answers, and asking was not allowed",
+        searches=item.searches + ((item.failed,) if item.failed is not None else ()),
+        coverage_fraction=fraction,
+        age_s=item.age_s,
+    )
+    if own is None or item.rows is None:
+        if item.failed is not None:
+            return replace(base, outcome=_FAILED[item.failed.status], why=item.failed.detail)
+        return base
+    word, why = _position_says(item, own, all_weighed, fraction, assumptions)
+    limits: tuple[Limit, ...] = ()
+    if word.permits_limit and not catalog.is_object_list:
+        limits, raised = _limits(target, item, own, fraction, word, assumptions)
+        if raised and word is Outcome.BLANK:
+            word = Outcome.HIDDEN
+            why = f"{raised[0]}; {why}"
+    if item.failed is not None:
+        why = f"{why}. The archive did not give a usable answer now ({item.failed.detail}): this is the stored one"
+    return replace(
+        base,
+        outcome=word,
+        why=why,
+        n_rows=len(item.rows),
+        n_compatible=int(own.compatible.sum()),
+        density_per_deg2=own.density_per_deg2 if np.isfinite(own.density_per_deg2) else None,
+        expected_chance=own.expected_chance,
+        candidates=candidates(own, item.rows, catalog.id, catalog.band_list),
+        limits=limits,
+    )
+
+
+def _position_says(
+    item: Evidence,
+    own: Weighed,
+    all_weighed: Mapping[str, Weighed],
+    fraction: float | None,
+    assumptions: Assumptions,
+) -> tuple[Outcome, str]:
+    """Outcome before neighbours that hide are considered, with the numbers that decided."""
+    catalog = item.catalog
+    if own.compatible.any():
+        word, why = outcome(own, global_chance=_global_chance(own, all_weighed), assumptions=assumptions)
+        if word is not None:
+            return word, why
+    n = len(own.compatible)
+    if catalog.is_object_list:
+        return Outcome.COVERAGE_UNKNOWN, f"no listed object at the position{_nearest(item, own)}; a list proves nothing"
+    if fraction == 0.0:
+        why = f"outside the footprint ({_footprint(catalog)})"
+        if n:
+            why += f", yet the archive returned {n} rows around it: the footprint in the catalog file needs a check"
+        return Outcome.NOT_COVERED, why
+    if fraction is None or n == 0:
+        why = "no row at the position, and no row around it either: nothing shows that the catalog reaches here"
+        return Outcome.COVERAGE_UNKNOWN, why
+    if fraction < COVERED:
+        return Outcome.PARTLY_COVERED, f"the footprint holds {fraction:.0%} of the error region; no row in that part"
+    return Outcome.BLANK, f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}"
+
+
+def _nearest(item: Evidence, own: Weighed) -> str:
+    if not len(own.separation_arcsec) or item.rows is None:
+        return ""
+    index = int(np.argmin(own.separation_arcsec))
+    distance = float(own.separation_arcsec[index])
+    text = f"{distance:.1f} arcsec" if distance < 120.0 else f"{distance / 60.0:.1f} arcmin"
+    return f" (nearest: {item.rows.key[index]}, {text})"
+
+
+def _footprint(catalog: Catalog) -> str:
+    region = catalog.coverage
+    parts = []
+    if region.dec_deg is not None:
+        parts.append(f"Dec {region.dec_deg[0]:+g} to {region.dec_deg[1]:+g} deg")
+    if region.l_deg is not None:
+        parts.append(f"l {region.l_deg[0]:g} to {region.l_deg[1]:g} deg")
+    if region.b_deg is not None:
+        parts.append(f"b {region.b_deg[0]:+g} to {region.b_deg[1]:+g} deg")
+    return ", ".join(parts) or region.kind
+
+
+def _limits(
+    target: Target,
+    item: Evidence,
+    own: Weighed,
+    fraction: float | None,
+    word: Outcome,
+    assumptions: Assumptions,
+) -> tuple[tuple[Limit, ...], list[str]]:
+    """Limits of every band with a depth, raised where a neighbour hides; and what hides, in words."""
+    rows, catalog = item.rows, item.catalog
+    assert rows is not None
+    flags = []
+    if word is Outcome.COVERAGE_UNKNOWN:
+        flags.append("coverage unproven")
+    if word is Outcome.PARTLY_COVERED and fraction is not None:
+        flags.append(f"covers {fraction:.0%} of the error region")
+    if word is Outcome.AMBIGUOUS:
+        flags.append("holds only if no compatible row is the counterpart")
+    ids = tuple(search.search_id for search in item.searches)
+    found: list[Limit] = []
+    hiding: list[str] = []
+    for columns in catalog.bands:
+        photometry = rows.flux.get(columns.band.name)
+        limit = limit_for_band(columns.band, photometry, assumptions=assumptions)
+        if limit is None:
+            continue
+        limit = replace(limit, search_ids=ids, flag="; ".join(flags))
+        if photometry is not None and len(rows):
+            limit, raised = raise_limit(
+                limit, photometry.value, own.separation_arcsec, catalog.resolution_arcsec, assumptions
+            )
+            if raised:
+                hiding.append(f"a bright neighbour hides the position in {columns.band.name} ({limit.flag})")
+        found.append(_as_pulse(target, catalog, limit))
+    return tuple(found), hiding
+
+
+def _as_pulse(target: Target, catalog: Catalog, limit: Limit) -> Limit:
+    """Say beside an image limit what it means for a pulse: it is not a pulse limit."""
+    if (
+        limit.band.waveband is not Waveband.RADIO
+        or limit.band.quantity is not Quantity.FLUX_DENSITY
+        or catalog.integration_s is None
+        or not target.pulses
+    ):
+        return limit
+    width = max(pulse.width_s for pulse in target.pulses)
+    if catalog.integration_s < width:
+        text = (
+            f"the {catalog.integration_s:g} s exposure is shorter than a {width:g} s pulse: it caught part of one "
+            "undiluted, or none"
+        )
+    else:
+        peak = float(pulse_peak_limit(limit.value, catalog.integration_s, width, 1))
+        text = f"as the peak of one {width:g} s pulse in {catalog.integration_s:g} s: < {peak:.3g} {limit.band.unit}"
+    if target.spin is not None:
+        inside = float(contains_whole_pulse_probability(target.spin.period_s, width, catalog.integration_s))
+        text += f"; chance that a whole pulse fell inside: {inside:.0%}"
+    return replace(limit, note=f"{limit.note}; {text}")
+
+
+def expected_chance_total(found: Sequence[Finding]) -> float:
+    """Unrelated rows expected inside the error regions of all catalogs searched."""
+    return float(sum(finding.expected_chance or 0.0 for finding in found))
+
+
+def chance_of_any(found: Sequence[Finding]) -> float:
+    """Probability that at least one catalog shows an unrelated row."""
+    return float(chance_within(expected_chance_total(found)))
