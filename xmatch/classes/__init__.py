@@ -1,0 +1,1 @@
+"""Kinds of object as declarative files, and the engine that holds them against what was found."""
