@@ -108,6 +108,27 @@ def look(
     return answer
 
 
+def requests_of(
+    target: Target, *, store: Store, catalogs: Mapping[str, Catalog], options: LookOptions | None = None
+) -> list[str]:
+    """Return exactly what a look would send now, in order, without asking and without writing anything."""
+    from xmatch.archives.fleet import plan_requests
+
+    options = options or LookOptions()
+    target_id = store.find_target(target)
+    plan = make_plan(
+        target,
+        catalogs,
+        store.current_searches(target_id) if target_id is not None else (),
+        assumptions=resolve(target, options.assumptions),
+        now=datetime.now(UTC),
+        offline=options.offline,
+        again=options.again,
+        age_limit_days=options.age_limit_days,
+    )
+    return plan_requests([step.question for step in plan if step.ask])
+
+
 def conclude(
     target: Target,
     evidence: Sequence[Evidence],
@@ -139,8 +160,7 @@ def conclude(
         standings=standings(target, limits, found, spin, assumptions, load_classes()),
         expected_chance=expected_chance_total(found),
         n_asked=n_asked,
-        n_from_store=sum(len(item.searches) for item in evidence) - n_asked
-        + sum(item.failed is not None for item in evidence),
+        n_from_store=sum(search.from_store for item in evidence for search in item.searches),
         offline=offline,
         remarks=tuple(remarks),
         store=store_name,

@@ -4,19 +4,63 @@ from __future__ import annotations
 
 import json
 import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
 import click
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
-
     from rich.console import Console
 
     from xmatch.pipeline import Progress
-    from xmatch.records import Look
+    from xmatch.records import Look, Target
 
-from contextlib import contextmanager
+
+def run_look(
+    target: Target,
+    err: Console,
+    *,
+    quiet: bool = False,
+    store: str | None = None,
+    offline: bool = False,
+    again: bool = False,
+    age_limit_days: float | None = None,
+    only: tuple[str, ...] = (),
+    catalog_folder: tuple[str, ...] = (),
+    contact: str | None = None,
+    archives: str | None = None,
+    show_requests: bool = False,
+) -> Look | None:
+    """Run a look as the options say; None when only the requests were to be shown."""
+    from xmatch.catalogs import load_catalogs
+    from xmatch.errors import ConfigurationError
+    from xmatch.pipeline import LookOptions, look, requests_of
+    from xmatch.store.store import open_store
+
+    if offline and again:
+        raise ConfigurationError("--offline and --again contradict each other; give one of them")
+    registry = load_catalogs(catalog_folder)
+    for name in only:
+        if name not in registry:
+            raise ConfigurationError(f"--only {name!r} names no catalog; there are {', '.join(registry)}")
+    chosen = {name: catalog for name, catalog in registry.items() if not only or name in only}
+    options = LookOptions(offline=offline, again=again, age_limit_days=age_limit_days)
+    with open_store(store) as opened:
+        if show_requests:
+            for text in requests_of(target, store=opened, catalogs=chosen, options=options):
+                click.echo(text)
+                click.echo()
+            return None
+        transport = None
+        if not offline:
+            from xmatch.archives.transport import Transport
+
+            transport = Transport(contact=contact, addresses=archives)
+        with progress_on(err, quiet) as progress:
+            return look(
+                target, store=opened, catalogs=chosen, transport=transport, options=options, progress=progress
+            )
 
 
 @contextmanager

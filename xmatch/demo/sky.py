@@ -280,8 +280,8 @@ def write(folder: Path) -> None:
     folder.mkdir(parents=True, exist_ok=True)
     for made in Sky().tables():
         for name in made.colnames:
-            if made[name].info.format and len(made):
-                made[name] = np.array([float(made[name].info.format % v) for v in made[name]])  # short files
+            if made[name].info.format:
+                made[name][:] = [float(made[name].info.format % value) for value in made[name]]  # short files
         made.write(folder / f"{made.meta['catalog']}.ecsv", format="ascii.ecsv", overwrite=True)
 
 
