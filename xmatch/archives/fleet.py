@@ -14,6 +14,7 @@ from collections import defaultdict, deque
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC
+from functools import cache
 from importlib.metadata import version
 
 from xmatch import __version__
@@ -211,10 +212,15 @@ def _status_of(fault: ArchiveError) -> ReplyStatus:
     return ReplyStatus.MISREAD
 
 
+@cache
+def _libraries() -> str:
+    """Versions of what asks and decodes; looking them up reads files, so it is done once."""
+    return ", ".join(f"{name} {version(name)}" for name in ("requests", "pyvo", "astroquery", "astropy"))
+
+
 def _client(transport: Transport) -> str:
-    libraries = (f"{name} {version(name)}" for name in ("requests", "pyvo", "astroquery", "astropy"))
     instead = f"; asked at {transport.addresses} in place of the archive" if transport.addresses else ""
-    return f"blankfield {__version__}; {', '.join(libraries)}{instead}"
+    return f"blankfield {__version__}; {_libraries()}{instead}"
 
 
 def _run(

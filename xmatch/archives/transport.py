@@ -14,7 +14,6 @@ import time
 from collections.abc import Callable
 from dataclasses import dataclass
 from datetime import UTC, datetime
-from email.utils import parsedate_to_datetime
 from typing import Any
 from urllib.parse import urlsplit
 
@@ -22,8 +21,9 @@ import requests
 import tenacity
 
 from xmatch import __version__
-from xmatch.archives.wire import ArchiveAdapter, Watch, is_loopback, reason_of
-from xmatch.errors import ArchiveError, ConfigurationError, MisreadError, TruncatedError, UnansweredError
+from xmatch.archives.mishaps import AgainError, busy, fault_of, retry_after_s
+from xmatch.archives.wire import ArchiveAdapter, Watch, is_loopback
+from xmatch.errors import ConfigurationError, TruncatedError, UnansweredError
 
 ADDRESSES_VARIABLE = "BLANKFIELD_ARCHIVES"
 """Environment variable that sends every request to another address, such as the embedded archive."""
@@ -110,26 +110,19 @@ class Stop:
         """Whether :meth:`now` was called."""
         return self._event.is_set()
 
-    def wait(self, seconds: float) -> bool:
-        """Wait, but not beyond a stop; True when it was called."""
-        return self._event.wait(max(0.0, seconds))
+    def pause(self, seconds: float) -> None:
+        """Wait, but not beyond a stop."""
+        self._event.wait(max(0.0, seconds))
 
-    def _add(self, watch: Watch) -> None:
+    def watch(self, watch: Watch) -> None:
+        """Let :meth:`now` cut this one too."""
         with self._lock:
             self._watches.add(watch)
 
-    def _remove(self, watch: Watch) -> None:
+    def forget(self, watch: Watch) -> None:
+        """The exchange under it is over."""
         with self._lock:
             self._watches.discard(watch)
-
-
-class _Again(Exception):
-    """A fault that may pass: try again, after ``retry_after_s`` when the archive named a time."""
-
-    def __init__(self, fault: ArchiveError, retry_after_s: float | None = None) -> None:
-        super().__init__(str(fault))
-        self.fault = fault
-        self.retry_after_s = retry_after_s
 
 
 class Transport:
@@ -159,7 +152,7 @@ class Transport:
         addresses: str | None = None,
         politeness: Politeness | None = None,
         *,
-        sleep: Callable[[float], object] | None = None,
+        sleep: Callable[[float], None] | None = None,
         clock: Callable[[], float] = time.monotonic,
         now: Callable[[], datetime] = lambda: datetime.now(UTC),
         jitter: Callable[[], float] = random.random,
@@ -218,10 +211,10 @@ class Transport:
         self._wait_for_turn(request.host, stop)
         until = self.clock() + self.politeness.deadline_s
         retrying = tenacity.Retrying(
-            retry=tenacity.retry_if_exception_type(_Again),
+            retry=tenacity.retry_if_exception_type(AgainError),
             wait=self._wait_before_next,
             stop=lambda state: self._give_up(state, until, stop),
-            sleep=self._sleep or stop.wait,
+            sleep=self._sleep or stop.pause,
             reraise=True,
         )
         try:
@@ -230,7 +223,7 @@ class Transport:
                     if on_try is not None:
                         on_try(attempt.retry_state.attempt_number)
                     return self._try_once(request, until, stop)
-        except _Again as again:
+        except AgainError as again:
             raise again.fault from None
         raise AssertionError("unreachable: tenacity either returns or raises")
 
@@ -262,11 +255,11 @@ class Transport:
             self._next_start[host] = turn + self.politeness.pace_s
         wait_s = turn - self.clock()
         if wait_s > 0.0:
-            (self._sleep or stop.wait)(wait_s)
+            (self._sleep or stop.pause)(wait_s)
 
     def _wait_before_next(self, state: tenacity.RetryCallState) -> float:
         fault = state.outcome.exception() if state.outcome is not None else None
-        if isinstance(fault, _Again) and fault.retry_after_s is not None:
+        if isinstance(fault, AgainError) and fault.retry_after_s is not None:
             return fault.retry_after_s
         longest = min(self.politeness.wait_s * 2.0 ** (state.attempt_number - 1), self.politeness.wait_max_s)
         return longest * (0.5 + 0.5 * self._jitter())
@@ -274,7 +267,7 @@ class Transport:
     def _give_up(self, state: tenacity.RetryCallState, until: float, stop: Stop) -> bool:
         wait_s = self._wait_before_next(state)
         fault = state.outcome.exception() if state.outcome is not None else None
-        asked_s = fault.retry_after_s if isinstance(fault, _Again) else None
+        asked_s = fault.retry_after_s if isinstance(fault, AgainError) else None
         return (
             stop.called
             or state.attempt_number >= self.politeness.max_tries
@@ -285,13 +278,13 @@ class Transport:
     def _try_once(self, request: Request, until: float, stop: Stop) -> Received:
         polite = self.politeness
         left_s = until - self.clock()
-        if stop.called or left_s <= 0.0:
-            raise UnansweredError("called off before it was asked; ask again")
         watch = Watch(left_s)
-        stop._add(watch)
+        stop.watch(watch)
         got = 0
         status: int | None = None
         try:
+            if stop.called or left_s <= 0.0:
+                raise UnansweredError("called off before it was asked; ask again")
             with watch, self._send(request, left_s) as response:
                 status = response.status_code
                 parts = []
@@ -318,9 +311,9 @@ class Transport:
                     "ask again later or allow more time",
                     http_status=status,
                 ) from None
-            raise _fault_of(fault, got, status, polite) from None
+            raise fault_of(fault, got, status, polite.connect_s, polite.read_s) from None
         finally:
-            stop._remove(watch)
+            stop.forget(watch)
         # a body that ends with the connection looks whole to the client when the watch cut it
         if watch.fired:
             raise UnansweredError(
@@ -329,7 +322,7 @@ class Transport:
                 http_status=status,
             )
         if received.http_status in BUSY:
-            raise _busy(received)
+            raise busy(received.http_status, received.retry_after_s)
         return received
 
     def _send(self, request: Request, left_s: float) -> requests.Response:
@@ -342,77 +335,6 @@ class Transport:
             # a redirected form would be sent on as a plain GET, without the question in it
             allow_redirects=request.method == "GET",
         )
-
-
-def retry_after_s(header: str | None, now: datetime) -> float | None:
-    """Read a Retry-After header, in seconds or as an HTTP date (RFC 9110, section 10.2.3).
-
-    Parameters
-    ----------
-    header : str or None
-        The header's value.
-    now : datetime
-        The present, time-zone aware.
-
-    Returns
-    -------
-    float or None
-        Seconds to wait, never negative; None when there is no header or it cannot be read.
-    """
-    if header is None:
-        return None
-    text = header.strip()
-    if text.isascii() and text.isdigit():
-        return float(text)
-    try:
-        when = parsedate_to_datetime(text)
-    except (TypeError, ValueError):
-        return None
-    if when.tzinfo is None:
-        when = when.replace(tzinfo=UTC)
-    return max(0.0, (when - now).total_seconds())
-
-
-def _busy(received: Received) -> _Again:
-    asked = received.retry_after_s
-    what = "too many requests" if received.http_status == 429 else "service unavailable"
-    when = "; it named no time" if asked is None else f"; it asks to wait {asked:g} s"
-    fault = UnansweredError(
-        f"HTTP {received.http_status}, {what}{when}; ask again later",
-        retry_after_s=asked,
-        http_status=received.http_status,
-    )
-    return _Again(fault, asked)
-
-
-def _fault_of(fault: requests.RequestException, got: int, status: int | None, polite: Politeness) -> Exception:
-    """Turn a fault of the client library into one of ours, or into a reason to try again."""
-    reason = reason_of(fault)
-    if isinstance(fault, requests.exceptions.SSLError):
-        return UnansweredError(f"the connection is not secure: {reason}; check the certificates of this machine")
-    if isinstance(fault, requests.exceptions.ProxyError):
-        return UnansweredError(f"the proxy did not connect: {reason}; check HTTP_PROXY, HTTPS_PROXY and NO_PROXY")
-    if isinstance(fault, requests.exceptions.ContentDecodingError):
-        return MisreadError(f"the answer cannot be decompressed: {reason}; ask again later")
-    if status is not None and isinstance(fault, requests.exceptions.ConnectionError) and _is_timeout(fault):
-        return _Again(
-            UnansweredError(
-                f"the answer stalled for {polite.read_s:g} s after {got} bytes; ask again later", http_status=status
-            )
-        )
-    if status is not None:
-        return _Again(MisreadError(f"the answer was cut after {got} bytes: {reason}; ask again"))
-    if isinstance(fault, requests.exceptions.ConnectTimeout):
-        return _Again(UnansweredError(f"no connection within {polite.connect_s:g} s; ask again later"))
-    if isinstance(fault, requests.exceptions.ReadTimeout):
-        return _Again(UnansweredError(f"time-out: connected, but nothing came for {polite.read_s:g} s; ask again later"))
-    if isinstance(fault, requests.exceptions.ConnectionError):
-        return _Again(UnansweredError(f"no connection: {reason}; check the network, or ask again later"))
-    return UnansweredError(f"the question could not be sent: {reason}; check the address in the catalog file")
-
-
-def _is_timeout(fault: requests.RequestException) -> bool:
-    return any("ReadTimeout" in type(argument).__name__ for argument in fault.args)
 
 
 def _user_agent(contact: str | None) -> str:

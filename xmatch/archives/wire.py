@@ -110,16 +110,22 @@ class ArchiveAdapter(HTTPAdapter):
             manager.pool_classes_by_scheme = _POOLS
         return manager
 
-    def send(  # type: ignore[override]
-        self, request: requests.PreparedRequest, *args: Any, proxies: Any = None, **kwargs: Any
+    def send(
+        self,
+        request: requests.PreparedRequest,
+        stream: bool = False,
+        timeout: Any = None,
+        verify: Any = True,
+        cert: Any = None,
+        proxies: Any = None,
     ) -> requests.Response:
         if self.addresses is None:
-            return super().send(request, *args, proxies=proxies, **kwargs)
+            return super().send(request, stream, timeout, verify, cert, proxies)
         sent = request.copy()
         sent.url = instead_of(request.url or "", self.addresses)
         if is_loopback(urlsplit(self.addresses).hostname):
             proxies = {}
-        response = super().send(sent, *args, proxies=proxies, **kwargs)
+        response = super().send(sent, stream, timeout, verify, cert, proxies)
         # a redirect is relative to the archive's own address and must come through here again
         response.url, response.request = request.url or "", request
         return response

@@ -86,7 +86,10 @@ class _Door:
         try:
             if not served:
                 raise ValueError("no unit")
-            return float(u.Unit(served).to(u.Unit(wanted)))
+            unit = u.Unit(served)
+            if not isinstance(unit, u.UnitBase):
+                raise TypeError("a logarithmic unit is no factor")
+            return float(unit.to(u.Unit(wanted)))
         except (ValueError, TypeError, u.UnitConversionError):
             raise MisreadError(
                 f"{self.catalog.id}: column {name!r} came in {served!r}, which cannot be read as {wanted}; "

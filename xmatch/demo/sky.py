@@ -81,7 +81,9 @@ class Sky:
         }  # fmt: skip
         return {name: np.concatenate([values, extra[name]]) for name, values in sky.items()}
 
-    def noisy(self, sky: dict[str, Floats], keep: Any, sigma_arcsec: float, years: float = 0.0) -> tuple[Floats, Floats]:
+    def noisy(
+        self, sky: dict[str, Floats], keep: Any, sigma_arcsec: float, years: float = 0.0
+    ) -> tuple[Floats, Floats]:
         """Positions of the kept stars at another epoch, with measurement noise."""
         n = int(np.count_nonzero(keep))
         east = sky["east"][keep] + years * sky["pm_ra"][keep] / 1.0e3 + self.rng.normal(0.0, sigma_arcsec, n)

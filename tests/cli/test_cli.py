@@ -1,0 +1,209 @@
+"""The command line: exit codes, what goes where, help that is there, faults that are explained."""
+
+from __future__ import annotations
+
+import json
+import os
+import signal
+import subprocess
+import sys
+import time
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from xmatch.cli import COMMANDS, EXIT_FAULT, EXIT_INTERRUPTED
+from xmatch.demo.faults import Fault
+from xmatch.demo.sky import BUILT_TO_SHOW
+from xmatch.resources import fixture_path
+
+TARGET = str(fixture_path("demo/tern-4.toml"))
+HERE = "17:38:01.50 -33:48:57.0"
+
+
+def run(*args: str, **env: str) -> subprocess.CompletedProcess[str]:
+    return subprocess.run(
+        [sys.executable, "-W", "error", "-m", "xmatch", *args],
+        capture_output=True, text=True, env=os.environ | env, timeout=60, check=False,
+    )  # fmt: skip
+
+
+@pytest.mark.parametrize("name", COMMANDS)
+def test_every_command_has_help_for_itself_and_its_options(name: str) -> None:
+    done = run(name, "--help")
+    assert done.returncode == 0
+    assert "Usage: blankfield " + name in done.stdout
+
+
+def test_help_lists_every_command() -> None:
+    done = run("--help")
+    assert done.returncode == 0
+    assert all(name in done.stdout for name in COMMANDS)
+
+
+def test_an_unknown_command_names_those_there_are() -> None:
+    done = run("lok")
+    assert done.returncode == 2
+    assert "look" in done.stderr
+
+
+@pytest.mark.parametrize(
+    "args",
+    [
+        ("12 34",),
+        ("400.0 -33.8 deg",),
+        ("264.5 -93.8 deg",),
+        ("nan -33.8 deg",),
+        ("25:00:00 -33:48:57",),
+        (HERE, "--error", "-1"),
+        (HERE, "--error", "nan"),
+        (HERE, "--distance", "4..1 kpc"),
+        (HERE, "--distance", "4"),
+        (HERE, "--dm", "-3"),
+        (HERE, "--period", "-5 s"),
+        (HERE, "--error-level", "120%"),
+        (HERE, "--only", "no-such-catalog"),
+        (HERE, "--offline", "--again"),
+        (TARGET, "--dm", "10"),
+        ("missing.toml",),
+    ],
+    ids=" ".join,
+)
+def test_bad_input_is_refused_with_exit_code_2_and_nothing_is_written(tmp_path: Path, args: tuple[str, ...]) -> None:
+    store = tmp_path / "refused.sqlite"
+    done = run("look", *args, "--store", str(store))
+    assert done.returncode == 2, done.stderr
+    assert done.stderr.strip()
+    assert "Traceback" not in done.stderr
+    assert not done.stdout
+
+
+def test_an_ambiguous_position_is_echoed_in_both_readings() -> None:
+    done = run("look", "12 34")
+    assert "hours" in done.stderr and "degrees" in done.stderr
+
+
+def test_the_position_is_echoed_in_both_notations_before_anything_is_asked(archive: Any) -> None:
+    done = run("look", HERE, "--show-requests", BLANKFIELD_ARCHIVES=archive.address)
+    assert done.returncode == 0, done.stderr
+    first = done.stderr.splitlines()[0]
+    assert "17:38:01.50" in first and "264.506250" in first
+    assert not archive.requests
+    assert "-source=I/355/gaiadr3" in done.stdout
+
+
+def test_look_answers_and_a_second_look_needs_no_archive(archive: Any) -> None:
+    first = run("look", TARGET, "--json", BLANKFIELD_ARCHIVES=archive.address)
+    assert first.returncode == 0, first.stderr
+    said = {finding["catalog_id"]: finding["outcome"] for finding in json.loads(first.stdout)["findings"]}
+    assert said == {name: str(word) for name, word in BUILT_TO_SHOW.items()}
+    asked = len(archive.requests)
+    second = run("look", TARGET, BLANKFIELD_ARCHIVES=archive.address)
+    assert second.returncode == 0, second.stderr
+    assert len(archive.requests) == asked
+    assert "Tern-4" in second.stdout.splitlines()[0] + second.stdout.splitlines()[1]
+    assert "\x1b" not in second.stdout
+
+
+def test_the_same_position_on_the_command_line(archive: Any) -> None:
+    done = run(
+        "look", HERE, "--name", "mine", "--error", "1.8,1.2,20", "--epoch", "2026.4", "--distance", "1.6..4.1 kpc",
+        "--dm", "148", "--period", "2711.4 s", "--derivative-limit", "2.4e-12", "--pulse", "2.1 Jy @ 200 MHz for 35 s",
+        "--json", BLANKFIELD_ARCHIVES=archive.address,
+    )  # fmt: skip
+    assert done.returncode == 0, done.stderr
+    answer = json.loads(done.stdout)
+    assert answer["target"]["name"] == "mine"
+    assert {f["catalog_id"]: f["outcome"] for f in answer["findings"]} == {k: str(v) for k, v in BUILT_TO_SHOW.items()}
+
+
+def test_the_demo_is_whole_and_says_that_it_is_invented() -> None:
+    done = run("demo", "--quiet")
+    assert done.returncode == 0, done.stderr
+    assert "Tern-4" in done.stdout
+    assert "invented" in done.stdout
+    assert not done.stderr
+
+
+def test_the_demo_shows_trouble_as_trouble() -> None:
+    done = run("demo", "--json", "--trouble", "nvss=html", "--trouble", "vlass-ql1=unavailable")
+    said = {finding["catalog_id"]: finding["outcome"] for finding in json.loads(done.stdout)["findings"]}
+    assert (said["nvss"], said["vlass-ql1"]) == ("misread", "unanswered")
+
+
+def test_catalogs_are_listed_and_shown() -> None:
+    listed = run("catalogs")
+    assert listed.returncode == 0 and all(name in listed.stdout for name in BUILT_TO_SHOW)
+    shown = run("catalogs", "2mass-psc")
+    assert "2006AJ....131.1163S" in shown.stdout and "1594" in shown.stdout
+    assert run("catalogs", "nonsense").returncode == 2
+    assert len(json.loads(run("catalogs", "--json").stdout)) == len(BUILT_TO_SHOW)
+
+
+def test_the_template_is_a_target_file(tmp_path: Path) -> None:
+    template = run("target").stdout
+    path = tmp_path / "mine.toml"
+    path.write_text(template)
+    assert run("target", str(path)).returncode == 0
+
+
+def test_a_store_of_nobody_is_said(tmp_path: Path) -> None:
+    path = tmp_path / "other.sqlite"
+    path.write_bytes(b"not a store at all" * 100)
+    done = run("look", HERE, "--offline", "--store", str(path))
+    assert done.returncode == 3
+    assert str(path) in done.stderr and "Traceback" not in done.stderr
+
+
+def test_an_unforeseen_fault_is_explained_without_a_traceback(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    code = (
+        "import xmatch.cli, click\n"
+        "xmatch.cli.COMMANDS['broken'] = ('broken', 'x')\n"
+        "import sys, types\n"
+        "m = types.ModuleType('broken')\n"
+        "@click.command('broken')\n"
+        "def command():\n    raise ZeroDivisionError('boom')\n"
+        "m.command = command\n"
+        "sys.modules['broken'] = m\n"
+        "xmatch.cli.main(['broken'])\n"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code], capture_output=True, text=True, check=False, env=os.environ | {"TMPDIR": str(tmp_path)}
+    )
+    assert done.returncode == EXIT_FAULT
+    assert "Traceback" not in done.stderr
+    assert "ZeroDivisionError" in done.stderr
+    assert "Traceback" in next(tmp_path.glob("blankfield-fault-*.txt")).read_text()
+
+
+def started(archive: Any, store: Path) -> subprocess.Popen[str]:
+    return subprocess.Popen(
+        [sys.executable, "-m", "xmatch", "look", TARGET, "--store", str(store)],
+        stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+        env=os.environ | {"BLANKFIELD_ARCHIVES": archive.address},
+    )  # fmt: skip
+
+
+def wait_for(condition: Any, seconds: float = 20.0) -> None:
+    end = time.monotonic() + seconds
+    while not condition():
+        assert time.monotonic() < end, "waited in vain"
+        os.sched_yield()
+
+
+def test_ctrl_c_exits_cleanly_with_what_was_learnt(archive: Any, tmp_path: Path) -> None:
+    store = tmp_path / "stopped.sqlite"
+    archive.misbehave("VIII/65/nvss", Fault("delay", seconds=30.0))
+    process = started(archive, store)
+    assert process.stderr is not None
+    seen = ""
+    while "atnf-psr: whole" not in seen or seen.count(": whole") < 8:
+        seen += process.stderr.readline()
+    process.send_signal(signal.SIGINT)
+    _, rest = process.communicate(timeout=15)
+    assert process.returncode == EXIT_INTERRUPTED
+    assert "kept" in rest and "Traceback" not in rest
+    archive.behave()
+    answer = json.loads(run("look", TARGET, "--json", "--store", str(store), BLANKFIELD_ARCHIVES=archive.address).stdout)
+    assert answer["n_asked"] == 1
