@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 PACKAGE = Path(__file__).parent.parent / "xmatch"
-GROUND = {"errors", "records", "assumptions", "constants"}
+GROUND = {"errors", "records", "vocabulary", "assumptions", "constants"}
 PURE = {"match", "limits", "flux", "spin"}
 MAY_IMPORT = {
     **{name: GROUND for name in GROUND},
@@ -24,7 +24,7 @@ MAY_IMPORT = {
     "archives": GROUND | {"__init__"},
     "demo": GROUND | {"resources", "target", "__init__"},
     "plan": GROUND | PURE | {"catalogs"},
-    "weigh": GROUND | PURE | {"catalogs"},
+    "weigh": GROUND | PURE | {"catalogs", "plan"},
     "pipeline": GROUND | PURE | {"catalogs", "classes", "archives", "store", "plan", "weigh", "__init__"},
     "report": GROUND | PURE | {"catalogs", "position", "__init__"},
 }

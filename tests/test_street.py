@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
@@ -89,10 +90,14 @@ def test_offline_never_asks_and_a_blank_store_answers_nothing(store: Store, arch
 @pytest.mark.parametrize(
     ("fault", "expected"),
     [
-        (Fault("status", code=503), Outcome.UNANSWERED),
+        (Fault("unavailable"), Outcome.UNANSWERED),
+        (Fault("closed"), Outcome.UNANSWERED),
         (Fault("html"), Outcome.MISREAD),
-        (Fault("cut"), Outcome.MISREAD),
-        (Fault("renamed column"), Outcome.MISREAD),
+        (Fault("cut stream"), Outcome.MISREAD),
+        (Fault("cut file"), Outcome.MISREAD),
+        (Fault("error status"), Outcome.MISREAD),
+        (Fault("empty body"), Outcome.MISREAD),
+        (Fault("no table"), Outcome.MISREAD),
     ],
     ids=lambda value: getattr(value, "kind", str(value)),
 )
@@ -107,6 +112,19 @@ def test_a_failing_archive_is_never_a_blank_sky(
     assert not [limit for limit in answer.limits if limit.limit.band.catalog_id == catalog_id]
     rest = {name: word for name, word in BUILT_TO_SHOW.items() if name != catalog_id}
     assert {name: seen[name] for name in rest} == rest
+
+
+@pytest.mark.parametrize(("catalog_id", "column"), [("nvss", "S1.4"), ("vlass-ql1", "Ftot")])
+@pytest.mark.parametrize(
+    "fault",
+    [Fault("renamed column", to="S14new"), Fault("changed unit", to="mag"), Fault("changed unit", to="K")],
+    ids=lambda fault: f"{fault.kind} {fault.to}",
+)
+def test_a_changed_column_is_misread(store: Store, archive: Any, catalog_id: str, column: str, fault: Fault) -> None:
+    archive.misbehave(REMOTE[catalog_id], replace(fault, column=column))
+    finding = next(f for f in ask(store, archive).findings if f.catalog_id == catalog_id)
+    assert finding.outcome is Outcome.MISREAD
+    assert column in finding.why
 
 
 def test_when_an_archive_fails_later_the_stored_answer_stands_with_its_age(store: Store, archive: Any) -> None:

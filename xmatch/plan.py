@@ -11,7 +11,7 @@ from xmatch.catalogs.model import Catalog, Table
 from xmatch.limits.coverage import touches
 from xmatch.match.motion import target_motion_sigma_arcsec
 from xmatch.match.separation import separation_arcsec
-from xmatch.records import Position, Question, ReplyStatus, Search, Target
+from xmatch.records import Question, ReplyStatus, Search, Target
 
 FASTEST_STAR_ARCSEC_YR = 10.4
 """Barnard's star, 1916AJ.....29..181B and Gaia DR3: nothing outside the solar system moves faster."""
@@ -19,6 +19,8 @@ AGE_LIMIT_DAYS = {"frozen": 180.0, "yearly": 90.0, "monthly": 14.0, "rolling": 3
 """Age at which an answer is asked for again, by the catalog's cadence (our choice; an option overrides it)."""
 SAME_CENTRE_ARCSEC = 0.1
 """A stored cone answers a new one only when its centre agrees this well (our choice)."""
+LEAST_SIGMA_ARCSEC = 1.0
+"""Catalog errors and frames make a cone below a few arcsec meaningless (our choice)."""
 DENSITY_RING = 4.0
 """The cone reaches at least this many times the compatible radius, so that a ring is left for the density."""
 
@@ -76,7 +78,8 @@ def make_plan(
     steps = []
     for catalog in catalogs.values():
         least = least_radius_arcsec(target, catalog, assumptions)
-        radius = max(catalog.neighbourhood_arcsec, DENSITY_RING * least)
+        ring = DENSITY_RING * assumptions.compatible_sigma * position.sigma_major_arcsec
+        radius = max(catalog.neighbourhood_arcsec, ring, least + fast_star_arcsec(target, catalog))
         limit_days = AGE_LIMIT_DAYS[catalog.refresh] if age_limit_days is None else age_limit_days
         tables = [
             table
@@ -92,17 +95,27 @@ def make_plan(
 
 
 def least_radius_arcsec(target: Target, catalog: Catalog, assumptions: Assumptions) -> float:
-    """Smallest cone that cannot miss the counterpart: error region, fast stars, a moving target."""
-    position = target.position
-    gap_yr = 0.0 if position.epoch_yr is None else abs(position.epoch_yr - catalog.epoch.value_yr)
-    region = assumptions.compatible_sigma * max(position.sigma_major_arcsec, 1.0)
-    stars = FASTEST_STAR_ARCSEC_YR * gap_yr if catalog.motion is not None else 0.0
+    """Smallest cone that still holds the error region, and the target's own motion where a speed is assumed."""
+    region = assumptions.compatible_sigma * max(target.position.sigma_major_arcsec, LEAST_SIGMA_ARCSEC)
     own = 0.0
     if assumptions.target_speed_km_s > 0.0 and target.distance is not None:
         own = assumptions.compatible_sigma * float(
-            target_motion_sigma_arcsec(assumptions.target_speed_km_s, target.distance.low_pc, gap_yr)
+            target_motion_sigma_arcsec(
+                assumptions.target_speed_km_s, target.distance.low_pc, epoch_gap_yr(target, catalog)
+            )
         )
-    return region + stars + own
+    return region + own
+
+
+def fast_star_arcsec(target: Target, catalog: Catalog) -> float:
+    """How far the fastest star can have moved between the epochs; a catalog without motions cannot move it back."""
+    return FASTEST_STAR_ARCSEC_YR * epoch_gap_yr(target, catalog) if catalog.motion is not None else 0.0
+
+
+def epoch_gap_yr(target: Target, catalog: Catalog) -> float:
+    """Years between the target's epoch and the catalog's; 0 without an epoch of the target."""
+    epoch = target.position.epoch_yr
+    return 0.0 if epoch is None else abs(epoch - catalog.epoch.value_yr)
 
 
 def smaller(question: Question, least_radius: float) -> Question | None:
@@ -129,10 +142,3 @@ def _answer_in_store(question: Question, least: float, stored: list[Search]) -> 
         and separation_arcsec(search.ra_deg, search.dec_deg, question.ra_deg, question.dec_deg) < SAME_CENTRE_ARCSEC
     ]
     return max(fitting, key=lambda search: (search.asked_at, search.search_id)) if fitting else None
-
-
-def error_region_text(position: Position, k: float) -> str:
-    """The error region in words."""
-    return (
-        f"{k:.2f} sigma ellipse of {k * position.sigma_major_arcsec:.2g} x {k * position.sigma_minor_arcsec:.2g} arcsec"
-    )

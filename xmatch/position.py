@@ -115,7 +115,7 @@ def format_position(ra_deg: float, dec_deg: float) -> str:
     sign = "-" if math.copysign(1.0, dec_deg) < 0 and dec_cs else "+"
     ra = f"{ra_ms // 3_600_000:02d}:{ra_ms // 60_000 % 60:02d}:{ra_ms % 60_000 / 1e3:06.3f}"
     dec = f"{sign}{dec_cs // 360_000:02d}:{dec_cs // 6_000 % 60:02d}:{dec_cs % 6_000 / 1e2:05.2f}"
-    return f"{ra} {dec} = {ra_deg:.6f} {dec_deg:+.6f} deg (ICRS)"
+    return f"{ra} {dec} = {round(ra_deg, 6) % 360.0:.6f} {dec_deg:+.6f} deg (ICRS)"
 
 
 # ------------------------------------------------------------------------------------------------

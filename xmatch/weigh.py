@@ -15,9 +15,14 @@ from xmatch.catalogs.model import Catalog
 from xmatch.limits.coverage import covered_fraction
 from xmatch.limits.depth import limit_for_band
 from xmatch.limits.hiding import raise_limit
-from xmatch.limits.pulses import contains_whole_pulse_probability, pulse_peak_limit
+from xmatch.limits.pulses import (
+    contains_whole_pulse_probability,
+    overlaps_pulse_probability,
+    pulse_peak_limit,
+)
 from xmatch.match.chance import chance_within
 from xmatch.match.decide import Weighed, candidates, outcome, weigh
+from xmatch.plan import FASTEST_STAR_ARCSEC_YR
 from xmatch.records import (
     Finding,
     Limit,
@@ -160,7 +165,15 @@ def _position_says(
         return Outcome.COVERAGE_UNKNOWN, why
     if fraction < COVERED:
         return Outcome.PARTLY_COVERED, f"the footprint holds {fraction:.0%} of the error region; no row in that part"
-    return Outcome.BLANK, f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}"
+    return Outcome.BLANK, f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}{_fast(item, own)}"
+
+
+def _fast(item: Evidence, own: Weighed) -> str:
+    """What a cone that had to be made smaller no longer shows: stars that moved out of it since the catalog's epoch."""
+    radius = min(search.radius_arcsec for search in item.searches)
+    if item.catalog.motion is None or abs(own.dt_yr) < 1.0 or radius >= FASTEST_STAR_ARCSEC_YR * abs(own.dt_yr):
+        return ""
+    return f"; in this cone of {radius:.0f} arcsec a star faster than {radius / abs(own.dt_yr):.1f} arcsec/yr could be missed"
 
 
 def _nearest(item: Evidence, own: Weighed) -> str:
@@ -240,8 +253,13 @@ def _as_pulse(target: Target, catalog: Catalog, limit: Limit) -> Limit:
         peak = float(pulse_peak_limit(limit.value, catalog.integration_s, width, 1))
         text = f"as the peak of one {width:g} s pulse in {catalog.integration_s:g} s: < {peak:.3g} {limit.band.unit}"
     if target.spin is not None:
-        inside = float(contains_whole_pulse_probability(target.spin.period_s, width, catalog.integration_s))
-        text += f"; chance that a whole pulse fell inside: {inside:.0%}"
+        period, exposure = target.spin.period_s, catalog.integration_s
+        if exposure < width:
+            caught = float(overlaps_pulse_probability(period, width, exposure))
+            text += f"; chance that it caught any of one: {caught:.0%}"
+        else:
+            inside = float(contains_whole_pulse_probability(period, width, exposure))
+            text += f"; chance that a whole pulse fell inside: {inside:.0%}"
     return replace(limit, note=f"{limit.note}; {text}")
 
 

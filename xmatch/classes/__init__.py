@@ -1,1 +1,1 @@
-"""Kinds of object as declarative files, and the engine that holds them against what was found."""
+"""Kinds of object that the target might be: what each predicts, and what the limits leave of it."""

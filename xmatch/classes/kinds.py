@@ -118,7 +118,9 @@ def xray_from_spin_down(scene: Scene, prediction: Prediction, rng: np.random.Gen
         share = float(spectrum.band_integral(low, high)) / own
         flux = light / sphere_cm2(scene.distance_pc) * share * _through(spectrum, low, high, scene.column_cm2)
         passes = passes * missed(flux, limit, limit.flux_cgs)
-        parts.append(f"{float(np.median(flux)):.1e} expected against < {limit.flux_cgs:.1e} in {limit.limit.band.label}")
+        parts.append(
+            f"{float(np.median(flux)):.1e} expected against < {limit.flux_cgs:.1e} in {limit.limit.band.label}"
+        )
     most = "at most " if budget.is_limit else ""
     sentence = (
         f"X-ray luminosity {most}10^{log_l:.1f} +- {p['scatter_dex']:g} dex erg/s ({p['low_kev']:g}-{p['high_kev']:g} keV) "
@@ -141,7 +143,9 @@ def xray_luminosity(scene: Scene, prediction: Prediction, rng: np.random.Generat
         low, high = limit.limit.band.nu_low_hz / KEV_HZ, limit.limit.band.nu_high_hz / KEV_HZ
         flux = light / sphere_cm2(scene.distance_pc) * blackbody_share(kt, low, high, scene.column_cm2)
         passes = passes * missed(flux, limit, limit.flux_cgs)
-        parts.append(f"{float(np.median(flux)):.1e} expected against < {limit.flux_cgs:.1e} in {limit.limit.band.label}")
+        parts.append(
+            f"{float(np.median(flux)):.1e} expected against < {limit.flux_cgs:.1e} in {limit.limit.band.label}"
+        )
     sentence = (
         f"bolometric luminosity 10^{p['mean_log']:g} +- {p['scatter_dex']:g} dex erg/s, blackbody of "
         f"{p['kt_low_kev']:g}-{p['kt_high_kev']:g} keV, column {scene.assumptions.column_cm2 or 0.0:.2g} cm^-2 +- "
@@ -200,25 +204,29 @@ def companion_magnitudes(scene: Scene, prediction: Prediction, rng: np.random.Ge
         return _not_made(prediction, f"it needs a distance range and a limit in {' or '.join(bands)}")
     modulus = 5.0 * np.log10(scene.distance_pc / 10.0)
     scatter = prediction.numbers["scatter_mag"] * rng.standard_normal(scene.n)
-    dimming = {}
+    a = scene.assumptions
+    grid = np.linspace(0.0, max(float(scene.av_mag.max()), 1.0e-6), AV_POINTS)
+    dimmed = {}
     for limit in limits:
-        band = limit.limit.band
-        grid = np.linspace(0.0, max(float(scene.av_mag.max()), 1.0e-6), AV_POINTS)
-        a = scene.assumptions
-        curve = band_extinction_mag(band, grid, law=a.extinction_law, r_v=a.r_v)
-        dimming[band.label] = modulus + scatter + np.interp(scene.av_mag, grid, curve)
+        curve = band_extinction_mag(limit.limit.band, grid, law=a.extinction_law, r_v=a.r_v)
+        magnitudes = modulus + scatter + np.interp(scene.av_mag, grid, curve) - limit.limit.value
+        dimmed[limit.limit.band.label] = 10.0 ** (-0.4 * magnitudes)  # flux of M = 0 over the limit
     survive = np.empty((len(prediction.types), scene.n))
     for row, star in enumerate(prediction.types):
-        unseen = np.ones(scene.n)
-        for limit in limits:
-            label = limit.limit.band.label
-            flux = 10.0 ** (-0.4 * (star.magnitudes[label] + dimming[label] - limit.limit.value))
-            # the bands of one star are not independent chances: the deepest decides
-            unseen = np.minimum(unseen, missed(flux, limit, 1.0))
-        survive[row] = unseen
+        # the bands of one star are not independent chances: the one that shows it best decides
+        best = np.max([10.0 ** (-0.4 * star.magnitudes[label]) * flux for label, flux in dimmed.items()], axis=0)
+        survive[row] = missed(best, limits[0], 1.0)
     by_type = survive.mean(axis=1)
-    gone = [star.name for star, value in zip(prediction.types, by_type, strict=True) if value < scene.assumptions.ruled_out_below]
-    left = [star.name for star, value in zip(prediction.types, by_type, strict=True) if value >= scene.assumptions.strained_below]
+    gone = [
+        star.name
+        for star, value in zip(prediction.types, by_type, strict=True)
+        if value < scene.assumptions.ruled_out_below
+    ]
+    left = [
+        star.name
+        for star, value in zip(prediction.types, by_type, strict=True)
+        if value >= scene.assumptions.strained_below
+    ]
     depths = ", ".join(f"{limit.limit.band.label} < {limit.limit.value:.2f} mag" for limit in limits)
     sentence = (
         f"{f'seen if {gone[0]} to {gone[-1]}' if gone else 'no type would surely have been seen'}; "
@@ -247,8 +255,14 @@ def period_range(scene: Scene, prediction: Prediction, rng: np.random.Generator)
     if scene.target.spin is None:
         return _not_made(prediction, "no period")
     p, low, high = scene.target.spin.period_s, prediction.numbers["low_s"], prediction.numbers["high_s"]
-    where = "inside" if low <= p <= high else (f"{p / high:.3g} times the longest" if p > high else f"{p / low:.3g} of the shortest")
-    sentence = f"period {p:g} s is {where} of the known {low:g}-{high:g} s; it informs, since long periods are hard to find"
+    where = (
+        "inside"
+        if low <= p <= high
+        else (f"{p / high:.3g} times the longest" if p > high else f"{p / low:.3g} of the shortest")
+    )
+    sentence = (
+        f"period {p:g} s is {where} of the known {low:g}-{high:g} s; it informs, since long periods are hard to find"
+    )
     return Verdict(prediction.name, sentence.replace("inside of", "inside"), None, prediction.source, informs_only=True)
 
 

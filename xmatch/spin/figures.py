@@ -120,7 +120,9 @@ def _usable(spin: Spin) -> tuple[float | None, bool, list[str]]:
         raise RangeError(f"period derivative {measured} is not allowed; it must be finite; leave it out if unknown")
     if measured is not None and measured <= 0.0:
         what = "no change of the period" if measured == 0.0 else "a shortening period"
-        notes.append(f"derivative {measured:g} means {what}: no spin-down is measured, and nothing follows from its size")
+        notes.append(
+            f"derivative {measured:g} means {what}: no spin-down is measured, and nothing follows from its size"
+        )
         measured = None
     if measured is not None:
         return measured, False, notes

@@ -15,7 +15,7 @@ from xmatch.errors import RangeError
 from xmatch.records import Floats
 
 NEUTRON_STAR_INERTIA_G_CM2 = 1.0e45
-"""Moment of inertia by convention (Lorimer & Kramer 2005, Handbook of Pulsar Astronomy, sect. 3.2; from memory)."""
+"""Moment of inertia by convention (Lorimer & Kramer 2005, Handbook of Pulsar Astronomy, ch. 3; from memory)."""
 NEUTRON_STAR_RADIUS_CM = 1.0e6
 """10 km by convention (same source; from memory)."""
 WHITE_DWARF_INERTIA_G_CM2 = 1.0e50
@@ -34,7 +34,9 @@ def _positive(name: str, value: ArrayLike) -> Floats:
     """Return the value as floats; refuse what is zero, negative or infinite, let ``nan`` pass."""
     array = np.asarray(value, dtype=float)
     if np.any(array <= 0.0) or np.any(np.isinf(array)):
-        raise RangeError(f"{name} = {value} is not allowed; it must be a finite number above 0; check its sign and unit")
+        raise RangeError(
+            f"{name} = {value} is not allowed; it must be a finite number above 0; check its sign and unit"
+        )
     return array
 
 
@@ -66,7 +68,7 @@ def spin_down_power(
 
     Notes
     -----
-    Edot = 4 pi^2 I Pdot / P^3, the derivative of I Omega^2 / 2 (definition; Lorimer & Kramer 2005, eq. 3.5).
+    Edot = 4 pi^2 I Pdot / P^3, the derivative of I Omega^2 / 2 (definition; Lorimer & Kramer 2005, ch. 3).
     """
     p, i = _positive("period_s", period_s), _positive("inertia_g_cm2", inertia_g_cm2)
     return 4.0 * math.pi**2 * i * _finite("derivative", derivative) / p**3
@@ -95,7 +97,7 @@ def equatorial_field(
     Notes
     -----
     B = sqrt(3 c^3 I P Pdot / (8 pi^2 R^6)) for a perpendicular rotator: 3.2e19 sqrt(P Pdot) G for I = 1e45 g cm^2
-    and R = 10 km (Manchester & Taylor 1977, Pulsars; Lorimer & Kramer 2005, eq. 3.15). Papers on long-period
+    and R = 10 km (Manchester & Taylor 1977, Pulsars; Lorimer & Kramer 2005, ch. 3). Papers on long-period
     sources often quote the polar field, twice as large: :func:`polar_field`. A force-free magnetosphere
     (Spitkovsky 2006, ApJ 648, L51) gives 0.58 to 0.82 of this value.
     """
@@ -124,7 +126,7 @@ def characteristic_age_yr(period_s: ArrayLike, derivative: ArrayLike) -> Floats:
 
     Notes
     -----
-    Lorimer & Kramer 2005, eq. 3.12. With an upper limit of the derivative the result is a lower limit.
+    Lorimer & Kramer 2005, ch. 3. With an upper limit of the derivative the result is a lower limit.
     """
     return _positive("period_s", period_s) / (2.0 * _positive("derivative", derivative)) / YR_S
 
@@ -140,7 +142,7 @@ def light_cylinder_field(
     inertia_g_cm2: ArrayLike = NEUTRON_STAR_INERTIA_G_CM2,
     radius_cm: ArrayLike = NEUTRON_STAR_RADIUS_CM,
 ) -> Floats:
-    """Field at the light cylinder, gauss: equatorial field times (R / R_LC)^3 (dipole; Lorimer & Kramer 2005, eq. 3.22).
+    """Field at the light cylinder, gauss: equatorial field times (R / R_LC)^3 (dipole; Lorimer & Kramer 2005, ch. 3).
 
     Parameters as in :func:`equatorial_field`.
     """

@@ -1,0 +1,101 @@
+"""Survival fractions: their interval, their floor, how they are printed, and what a blank says of one source."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from xmatch.errors import RangeError
+from xmatch.records import Floats, PhysicalLimit
+
+Z_95 = 1.959963984540054
+"""Two-sided 95 % of a normal distribution (definition)."""
+RULE_OF_THREE = 3.0
+"""No survivor in N draws means less than 3/N at 95 % (-ln 0.05 = 2.996)."""
+DEFAULT_THRESHOLD_SIGMA = 5.0
+"""Detection threshold of a limit that does not say its own (common practice, no source)."""
+UNUSABLE_FLAGS = ("coverage unproven", "hidden", "covers", "holds only if")
+"""Words in a limit's flag that keep it from ruling anything out."""
+
+
+def wilson(survivors: float, n: int, z: float = Z_95) -> tuple[float, float]:
+    """Interval of a fraction seen as ``survivors`` out of ``n``.
+
+    Parameters
+    ----------
+    survivors : float
+        0 to n; a sum of weights in [0, 1] counts as that many survivors, which overstates the interval.
+    n : int
+        Above 0.
+    z : float
+        Normal deviate; the default is two-sided 95 %.
+
+    References
+    ----------
+    Wilson 1927, J. Am. Stat. Assoc. 22, 209.
+    """
+    if n < 1 or not 0.0 <= survivors <= n * (1.0 + 1.0e-12):
+        raise RangeError(f"{survivors} of {n} is not allowed; 0 to n survivors of at least one draw are needed")
+    p = min(survivors / n, 1.0)
+    scale = 1.0 + z**2 / n
+    centre = (p + z**2 / (2 * n)) / scale
+    half = z / scale * math.sqrt(p * (1.0 - p) / n + z**2 / (4.0 * n**2))
+    return max(0.0, centre - half), min(1.0, centre + half)
+
+
+def floored(fraction: float, n: int) -> float:
+    """The fraction, or 3/N where the draws cannot tell it from less: a survival is never 0."""
+    return max(fraction, min(1.0, RULE_OF_THREE / n))
+
+
+def say_fraction(fraction: float, n: int) -> str:
+    """A survival in words for people: ``43 %``, ``0.4 %``, ``< 3e-05``."""
+    if fraction <= RULE_OF_THREE / n:
+        return f"< {RULE_OF_THREE / n:.0e}"
+    if fraction < 0.001:
+        return f"{fraction:.1e}"
+    return f"{100.0 * fraction:.{0 if fraction >= 0.1 else 1}f} %"
+
+
+def miss_probability(flux: ArrayLike, limit: float, n_sigma: float | None, confidence: float) -> Floats:
+    """Probability that a source of this flux leaves the position blank.
+
+    Parameters
+    ----------
+    flux : array_like
+        True flux as observed, >= 0, in the unit of ``limit``.
+    limit : float
+        Flux that is detected with the probability ``confidence``, > 0.
+    n_sigma : float or None
+        The limit in units of the noise; None takes a threshold of 5 sigma.
+    confidence : float
+        In (0, 1).
+
+    Notes
+    -----
+    1 - C(F) with C = Phi(F / s - t), where s = limit / n_sigma is the noise and t = n_sigma - z the threshold: C is the
+    confidence at the limit and 1/2 at the threshold (Gaussian noise; common practice). C is counted from its value at
+    zero flux, so that no source at all is missed with probability 1.
+    """
+    from scipy.special import ndtr, ndtri
+
+    if not (limit > 0.0 and 0.0 < confidence < 1.0):
+        raise RangeError(
+            f"limit {limit} at confidence {confidence} is not allowed; a limit above 0 and a confidence between 0 and 1 "
+            "are needed"
+        )
+    z = float(ndtri(confidence))
+    total = n_sigma if n_sigma is not None else DEFAULT_THRESHOLD_SIGMA + z
+    threshold = max(total - z, 0.0)
+    empty = float(ndtr(-threshold))
+    # a limit of fewer sigma than its confidence needs is read with that many
+    found = ndtr(np.asarray(flux, dtype=float) / limit * max(total, z) - threshold)
+    return np.clip(1.0 - (found - empty) / (1.0 - empty), 0.0, 1.0)
+
+
+def usable(limit: PhysicalLimit) -> bool:
+    """Whether a limit may rule anything out: nothing in its flag says that a source could have gone unseen."""
+    flag = limit.limit.flag.lower()
+    return not any(word in flag for word in UNUSABLE_FLAGS)
