@@ -115,6 +115,7 @@ def template() -> Callable[..., str]:
         *, mean: float = 33.0, scatter: float = 1.0, low: float = 0.3, high: float = 0.30001,
         solid_angle: str = "4 pi", class_id: str = "invented",
     ) -> str:  # fmt: skip
+        words = f'flux_kind = "steady", solid_angle = "{solid_angle}"'
         return f"""
 id = "{class_id}"
 title = "invented class"
@@ -124,7 +125,7 @@ summary = "invented"
 test = "x-ray luminosity"
 spectrum = "blackbody"
 luminosity_of = "bolometric"
-luminosity = {{ value = {mean}, unit = "log10 erg/s", flux_kind = "steady", solid_angle = "{solid_angle}", source = "invented" }}
+luminosity = {{ value = {mean}, unit = "log10 erg/s", {words}, source = "invented" }}
 scatter = {{ value = {scatter}, unit = "dex", source = "invented" }}
 temperature = {{ low = {low}, high = {high}, unit = "keV", source = "invented" }}
 """

@@ -111,6 +111,7 @@ def test_an_efficiency_per_steradian_allows_four_pi_as_much(make: Any) -> None:
         budget(make, kind="period average", value=1 / (4 * math.pi), angle="per steradian"), evidence, draws
     ).weights
     assert whole is not None
+    assert part is not None
     assert 0.05 < whole.mean() < 0.95
     assert np.array_equal(whole, part)
 

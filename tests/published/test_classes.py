@@ -152,9 +152,9 @@ def test_published_value(row: dict[str, Any], tmp_path: Path) -> None:
     assert found == pytest.approx(row["expected"], abs=row["tolerance"]), row["source"]
 
 
-# arXiv:2507.05078: an AB limit of 24.7 at the 841 s source excludes every main-sequence star and ultracool dwarf earlier
-# than M7; with M_J(M7) = 10.70 (2013ApJS..208....9P, on-line table) and AB - Vega = 0.8938 (2003AJ....126.1090C) that
-# statement reaches to 4180 pc
+# arXiv:2507.05078: an AB limit of 24.7 at the 841 s source excludes every main-sequence star and ultracool dwarf
+# earlier than M7; with M_J(M7) = 10.70 (2013ApJS..208....9P, on-line table) and AB - Vega = 0.8938
+# (2003AJ....126.1090C) that statement reaches to 4180 pc
 @pytest.mark.parametrize(("dist_pc", "earliest"), [(4150.0, "M8V"), (4210.0, "M7V")])
 def test_a_deep_infrared_limit_leaves_m7_and_later(tmp_path: Path, dist_pc: float, earliest: str) -> None:
     own = target(Distance(dist_pc * (1 - 1e-9), dist_pc))

@@ -21,12 +21,12 @@ from xmatch.records import Band, Floats, MagnitudeSystem, Outcome, PhysicalLimit
 
 UM_CM = 1.0e-4
 SAME_WAVELENGTH, SAME_WIDTH = 0.04, 0.4
-"""Two bands are the same when their pivots agree to 4 % and their widths to 40 % (our choice: it joins the J or K bands of
-different cameras, colour terms below 0.1 mag, and keeps a broad G apart from a narrow r)."""
+"""Two bands are the same when their pivots agree to 4 % and their widths to 40 % (our choice: it joins the J or K bands
+of different cameras and keeps a broad G apart from a narrow r)."""
 LIGHT = (Waveband.ULTRAVIOLET, Waveband.OPTICAL, Waveband.NEAR_INFRARED, Waveband.MID_INFRARED)
 EXTINCTION_NODES = 64
 TAIL_SIGMA = 2.0
-"""Intrinsic scatters beyond the table's brightest and faintest star that a detection may lie (common practice, no source)."""
+"""Intrinsic scatters by which a detection may lie beyond the table's brightest and faintest star (our choice)."""
 MOST = 0.5
 """Part of the draws that must put a counterpart among the listed stars for it to speak for the class (our choice)."""
 
@@ -59,8 +59,8 @@ def companion_magnitudes(prediction: Prediction, evidence: Evidence, draws: Draw
 
     Notes
     -----
-    Every listed type is taken as equally likely and holds the same number of draws; survival is the mean over all. A type
-    is still allowed where at least ``strained_below`` of its draws are missed. Colours within a band are ignored.
+    Every listed type is taken as equally likely and holds the same number of draws; survival is the mean over all. A
+    type is still allowed where at least ``strained_below`` of its draws are missed. Colours within a band are ignored.
     """
     table = prediction.magnitudes
     if table is None:

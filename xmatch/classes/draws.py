@@ -108,8 +108,8 @@ def draw(
 
     Notes
     -----
-    The column is log-normal about the assumed one with ``column_scatter_dex`` (He, Ng & Kaspi 2013, ApJ 768, 64), and the
-    extinction scales with it: dust and gas come together.
+    The column is log-normal about the assumed one with ``column_scatter_dex`` (He, Ng & Kaspi 2013, ApJ 768, 64), and
+    the extinction scales with it: dust and gas come together.
     """
     n = len(deviates.quantile)
     factor = variant.column_factor * 10.0 ** (assumptions.column_scatter_dex * deviates.column_sigma)

@@ -96,8 +96,8 @@ def standings(
     -------
     tuple of Standing
         In the order of the classes. ``survival`` is the fraction of draws that agrees with everything seen, under the
-        assumptions as given; 3/N stands for anything smaller. ``survival_low`` and ``survival_high`` are the extremes over
-        the variants, binomial error (Wilson 1927, 95 %) included.
+        assumptions as given; 3/N stands for anything smaller. ``survival_low`` and ``survival_high`` are the extremes
+        over the variants, binomial error (Wilson 1927, 95 %) included.
 
     Raises
     ------

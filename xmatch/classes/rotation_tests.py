@@ -76,8 +76,8 @@ def spin_down_budget(prediction: Prediction, evidence: Evidence, draws: Draws) -
     )
     sentence = (
         f"radio power {span(low, high)} erg/s over {span_kpc(draws.dist_pc)} (peak {pulse.peak_jy:g} Jy at "
-        f"{pulse.nu_hz / 1e6:g} MHz, index {a.radio_index:g}, {a.radio_low_hz / 1e6:g} MHz-{a.radio_high_hz / 1e9:g} GHz, "
-        f"{emission}, {kind}) against {say_power(budget)}"
+        f"{pulse.nu_hz / 1e6:g} MHz, index {a.radio_index:g}, {a.radio_low_hz / 1e6:g} MHz-"
+        f"{a.radio_high_hz / 1e9:g} GHz, {emission}, {kind}) against {say_power(budget)}"
     )
     if efficiency.value != 1.0:
         sentence += f" times {efficiency.value:g}"
@@ -96,8 +96,8 @@ def _budget_overturn(
         needed = low / allowed
         return (
             f"emission into less than {beam / needed:.1g} of the sky, a distance below "
-            f"{_pc(nearest_pc / math.sqrt(needed))}, a derivative above {derivative * needed:.1g}, or radio waves over a "
-            "far narrower range of frequencies"
+            f"{_pc(nearest_pc / math.sqrt(needed))}, a derivative above {derivative * needed:.1g}, or radio waves "
+            "over a far narrower range of frequencies"
         )
     if high <= allowed:
         reach = (
@@ -134,7 +134,7 @@ def death_lines(prediction: Prediction, evidence: Evidence, draws: Draws) -> App
 
 
 def period_range(prediction: Prediction, evidence: Evidence, draws: Draws) -> Applied:
-    """Say where the period lies among the periods known for the class. It only informs: a new member may be the first."""
+    """Say where the period lies among those known for the class. It only informs: a new member may be the first."""
     known = prediction.facts["period"]
     if evidence.spin is None:
         return Applied("no period is given", informs_only=True)

@@ -83,8 +83,8 @@ def miss_probability(flux: ArrayLike, limit: float, n_sigma: float | None, confi
 
     if not (limit > 0.0 and 0.0 < confidence < 1.0):
         raise RangeError(
-            f"limit {limit} at confidence {confidence} is not allowed; a limit above 0 and a confidence between 0 and 1 "
-            "are needed"
+            f"limit {limit} at confidence {confidence} is not allowed; a limit above 0 and a confidence between 0 and "
+            "1 are needed"
         )
     z = float(ndtri(confidence))
     total = n_sigma if n_sigma is not None else DEFAULT_THRESHOLD_SIGMA + z

@@ -21,7 +21,8 @@ from xmatch.records import Band, Floats, PhysicalLimit
 TEMPERATURE_NODES = 32
 COLUMN_NODES = 48
 """Grid on which absorbed fractions are computed; between nodes their logarithm is read linearly in log kT and log N_H.
-For 0.13-0.6 keV, or a power law, behind 1e20-1e23 cm^-2 the flux is good to 1 % (measured in tests/classes/test_xray_tests.py)."""
+For 0.13-0.6 keV, or a power law, behind 1e20-1e23 cm^-2 the flux is good to 1 % (measured in
+tests/classes/test_xray_tests.py)."""
 LOWEST_COLUMN_CM2 = 1.0e16
 """Below this nothing is absorbed above 0.1 keV."""
 TINY = 1.0e-300
@@ -109,8 +110,8 @@ def luminosity_template(prediction: Prediction, evidence: Evidence, draws: Draws
 
     Notes
     -----
-    Temperature drawn evenly in its logarithm over the file's range; luminosity log-normal; each draw is absorbed by its own
-    column and put at its own distance.
+    Temperature drawn evenly in its logarithm over the file's range; luminosity log-normal; each draw is absorbed by
+    its own column and put at its own distance.
     """
     if not len(draws.dist_pc):
         return Applied(NO_DISTANCE)
@@ -119,7 +120,10 @@ def luminosity_template(prediction: Prediction, evidence: Evidence, draws: Draws
     mean = isotropic_log10(prediction.facts["luminosity"])
     kt = temperature.low * (temperature.high / temperature.low) ** rng.uniform(size=draws.n)
     log_l = mean + scatter * rng.standard_normal(draws.n)
-    says = f"log luminosity {mean:.2f} +- {scatter:g} erg/s bolometric, blackbody {temperature.low:g}-{temperature.high:g} keV"
+    says = (
+        f"log luminosity {mean:.2f} +- {scatter:g} erg/s bolometric, "
+        f"blackbody {temperature.low:g}-{temperature.high:g} keV"
+    )
     flux = 10.0**log_l / sphere_cm2(draws.dist_pc)
 
     def arriving(band_kev: tuple[float, float]) -> Floats:
@@ -133,9 +137,9 @@ def luminosity_from_spin_down(prediction: Prediction, evidence: Evidence, draws:
 
     Notes
     -----
-    log L = intercept + slope log Edot with log-normal scatter (Possenti et al. 2002, A&A 387, 993). An upper limit of the
-    power predicts no more than an upper limit, and a power outside the calibrated range is an extrapolation: either way
-    the test only informs.
+    log L = intercept + slope log Edot with log-normal scatter (Possenti et al. 2002, A&A 387, 993). An upper limit of
+    the power predicts no more than an upper limit, and a power outside the calibrated range is an extrapolation: either
+    way the test only informs.
     """
     facts = prediction.facts
     budget = evidence.budget(prediction.choices["star"])
@@ -189,8 +193,8 @@ def _against_limits(
         misses.append((limit.limit.band.catalog_id, miss))
         low, high = middle(flux)
         compared.append(
-            f"{low:.1e} to {high:.1e} erg/s/cm^2 (5-95 %) in {limit.limit.band.label} against < {limit.flux_cgs:.1e} at "
-            f"{limit.limit.confidence:.0%}: {_percent(float(miss.mean()))} missed"
+            f"{low:.1e} to {high:.1e} erg/s/cm^2 (5-95 %) in {limit.limit.band.label} against < {limit.flux_cgs:.1e} "
+            f"at {limit.limit.confidence:.0%}: {_percent(float(miss.mean()))} missed"
         )
     column_low, column_high = middle(draws.column_cm2)
     column = f"column {span(column_low, column_high)} cm^-2" if column_high > 0.0 else "no column"

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from xmatch.errors import RangeError
-from xmatch.flux.spectra import Spectrum
+from xmatch.flux.spectra import Spectrum, gauss_legendre
 from xmatch.records import Floats
 
 TABLE = "photoelectric_wilms2000.csv"
@@ -103,7 +103,7 @@ def _nodes(low_kev: float, high_kev: float) -> tuple[Floats, Floats, Floats]:
     borders = np.concatenate([[np.log(low_kev)], inside, [np.log(high_kev)]])
     if low_kev < THOMSON_ABOVE_KEV < high_kev:
         borders = np.unique(np.append(borders, np.log(THOMSON_ABOVE_KEV)))
-    x, w = np.polynomial.legendre.leggauss(NODES_PER_CELL)
+    x, w = gauss_legendre(NODES_PER_CELL)
     half, middle = 0.5 * np.diff(borders), 0.5 * (borders[1:] + borders[:-1])
     log_nodes = (middle[:, None] + half[:, None] * x).ravel()
     e = np.exp(log_nodes)

@@ -10,6 +10,7 @@ from numpy.typing import ArrayLike
 
 from xmatch.constants import C_CM_S
 from xmatch.errors import RangeError
+from xmatch.flux.spectra import gauss_legendre
 from xmatch.records import Band, Floats
 
 TABLE = "extinction.csv"
@@ -92,7 +93,7 @@ def band_extinction_mag(
         return np.zeros_like(av)
     if high_um < LOW_UM:
         return np.full_like(av, np.nan)
-    x, w = np.polynomial.legendre.leggauss(NODES)
+    x, w = gauss_legendre(NODES)
     half, middle = 0.5 * (band.nu_high_hz - band.nu_low_hz), 0.5 * (band.nu_high_hz + band.nu_low_hz)
     ratio = extinction_ratio(C_CM_S / (middle + half * x) / UM_CM, law=law, r_v=r_v)
     through = 10.0 ** (-0.4 * np.multiply.outer(av, ratio)) @ (w / w.sum())

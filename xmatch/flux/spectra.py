@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Protocol
 
 import numpy as np
@@ -94,10 +95,17 @@ class ThermalBremsstrahlung:
         return self.kt_kev * (np.exp(-a / self.kt_kev) - np.exp(-b / self.kt_kev))
 
 
+@lru_cache(maxsize=16)
+def gauss_legendre(n: int) -> tuple[Floats, Floats]:
+    """Nodes and weights on [-1, 1], made once."""
+    x, w = np.polynomial.legendre.leggauss(n)
+    return x, w
+
+
 def _quadrature(spectrum: Spectrum, low_kev: ArrayLike, high_kev: ArrayLike) -> Floats:
     """Gauss-Legendre over the logarithm of energy."""
     a, b = _band(low_kev, high_kev)
-    x, w = np.polynomial.legendre.leggauss(NODES)
+    x, w = gauss_legendre(NODES)
     la, lb = np.log(a)[..., None], np.log(b)[..., None]
     e = np.exp(0.5 * (lb - la) * x + 0.5 * (lb + la))
     return np.sum(0.5 * (lb - la) * w * e * spectrum.energy_flux(e), axis=-1)

@@ -51,13 +51,13 @@ def gaussian_bound(value: ArrayLike, sigma: ArrayLike, confidence: ArrayLike) ->
     -----
     Flat prior on S >= 0: U = f + s z with z = PhiInv(1 - (1 - CL) Phi(f/s)) (Helene 1983, NIM 212, 319, Gaussian case).
     """
-    from scipy.special import ndtr, ndtri
+    from scipy.special import log_ndtr, ndtri_exp
 
     f, s = np.asarray(value, dtype=float), np.asarray(sigma, dtype=float)
     if np.any(s <= 0.0):
         raise RangeError(f"error {sigma} is not allowed; a measurement needs an error above 0")
-    # the upper tail, not 1 - small: exact far below zero
-    return f - s * ndtri((1.0 - _fraction("confidence", confidence)) * ndtr(f / s))
+    # in logarithms of the tail, so that it holds far below zero
+    return f - s * ndtri_exp(np.log1p(-_fraction("confidence", confidence)) + log_ndtr(f / s))
 
 
 def completeness_sigma(threshold_sigma: ArrayLike, probability: ArrayLike) -> Floats:
@@ -66,7 +66,7 @@ def completeness_sigma(threshold_sigma: ArrayLike, probability: ArrayLike) -> Fl
 
 
 def trials_threshold(threshold_sigma: ArrayLike, beams: ArrayLike) -> Floats:
-    """Threshold with the same false-alarm rate over several beams (Sidak 1967): PhiInv((Phi(t))^(1/N))... upper tail."""
+    """Threshold with the same false-alarm rate over several beams, worked in the upper tail (Sidak 1967, JASA 62, 626)."""
     from scipy.special import ndtr, ndtri
 
     n = np.maximum(np.asarray(beams, dtype=float), 1.0)
@@ -75,9 +75,10 @@ def trials_threshold(threshold_sigma: ArrayLike, beams: ArrayLike) -> Floats:
 
 def restate(value: ArrayLike, sigma_from: ArrayLike, sigma_to: ArrayLike, quantity: Quantity) -> Floats:
     """A limit of one number of sigma restated at another: fluxes scale, magnitudes shift (definition)."""
-    ratio = np.asarray(sigma_to, dtype=float) / np.asarray(sigma_from, dtype=float)
-    if np.any(~(ratio > 0.0)):
+    old, new = np.asarray(sigma_from, dtype=float), np.asarray(sigma_to, dtype=float)
+    if np.any(~(old > 0.0)) or np.any(~(new > 0.0)):
         raise RangeError(f"{sigma_from} to {sigma_to} sigma is not allowed; both must be above 0")
+    ratio = new / old
     if quantity is Quantity.MAGNITUDE:
         return np.asarray(value, dtype=float) - 2.5 * np.log10(ratio)
     return np.asarray(value, dtype=float) * ratio

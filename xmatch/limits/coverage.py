@@ -75,7 +75,7 @@ def error_points(position: Position, k: float) -> tuple[Floats, Floats]:
     inside = -math.expm1(-0.5 * k * k)
     p = (np.arange(RINGS) + 0.5) / RINGS * inside
     r = np.sqrt(-2.0 * np.log1p(-p))[:, None]
-    phi = 2.0 * np.pi * (np.arange(SPOKES)[None, :] + 0.5 * (np.arange(RINGS)[:, None] % 2)) / SPOKES
+    phi = 2.0 * np.pi * (np.arange(SPOKES)[None, :] + 0.25 + 0.5 * (np.arange(RINGS)[:, None] % 2)) / SPOKES
     u, v = (r * np.cos(phi)).ravel(), (r * np.sin(phi)).ravel()
     cxx, cyy, cxy = covariance(position.sigma_major_arcsec, position.sigma_minor_arcsec, position.angle_deg)
     sx = math.sqrt(float(cxx))

@@ -58,8 +58,8 @@ class DerivativeLine:
     source: str
 
 
-# Chen & Ruderman 1993 (constants as printed, to 0.1); powers of the radius from Rea et al. 2024, ApJ 961, 214 (I, II, IV)
-# and the data scripts of 2023Natur.619..487H (III)
+# Chen & Ruderman 1993 (constants as printed, to 0.1); powers of the radius from Rea et al. 2024, ApJ 961, 214 (I, II,
+# IV) and the data scripts of 2023Natur.619..487H (III)
 FIELD_LINES = (
     FieldLine("Chen & Ruderman I: pure dipole", 4.0, 7.5, 9.5, 49.3, CHEN_RUDERMAN),
     FieldLine("Chen & Ruderman II: very curved field lines", 4.0, 6.5, 8.5, 45.7, CHEN_RUDERMAN),

@@ -86,8 +86,8 @@ def figures(spin: Spin) -> SpinFigures:
         raise RangeError(f"period {spin.period_s} s is not allowed; it must be a finite number above 0")
     if spin.derivative_limit is not None and not (math.isfinite(spin.derivative_limit) and spin.derivative_limit > 0.0):
         raise RangeError(
-            f"limit {spin.derivative_limit} of the period derivative is not allowed; it must be a finite number above 0; "
-            "give the upper limit of its absolute value"
+            f"limit {spin.derivative_limit} of the period derivative is not allowed; it must be a finite number above "
+            "0; give the upper limit of its absolute value"
         )
     derivative, is_limit, notes = _usable(spin)
     cylinder = float(light_cylinder_radius_cm(spin.period_s))
@@ -128,8 +128,8 @@ def _usable(spin: Spin) -> tuple[float | None, bool, list[str]]:
         return measured, False, notes
     if spin.derivative_limit is not None:
         notes.append(
-            f"derivative < {spin.derivative_limit:g} is an upper limit: power and fields are upper limits, the age is a "
-            "lower limit"
+            f"derivative < {spin.derivative_limit:g} is an upper limit: power and fields are upper limits, the age is "
+            "a lower limit"
         )
         return spin.derivative_limit, True, notes
     if not notes:

@@ -35,7 +35,7 @@ def _positive(name: str, value: ArrayLike) -> Floats:
     array = np.asarray(value, dtype=float)
     if np.any(array <= 0.0) or np.any(np.isinf(array)):
         raise RangeError(
-            f"{name} = {value} is not allowed; it must be a finite number above 0; check its sign and unit"
+            f"{name} = {array} is not allowed; it must be a finite number above 0; check its sign and unit"
         )
     return array
 
@@ -43,7 +43,7 @@ def _positive(name: str, value: ArrayLike) -> Floats:
 def _finite(name: str, value: ArrayLike) -> Floats:
     array = np.asarray(value, dtype=float)
     if np.any(np.isinf(array)):
-        raise RangeError(f"{name} = {value} is not allowed; it must be finite; give nan where nothing was measured")
+        raise RangeError(f"{name} = {array} is not allowed; it must be finite; give nan where nothing was measured")
     return array
 
 
@@ -226,8 +226,8 @@ def derivative_from_phase(period_s: ArrayLike, phase_error_s: ArrayLike, baselin
     p, dt = _positive("period_s", period_s), _positive("phase_error_s", phase_error_s)
     if np.any(dt >= p / 2.0):
         raise RangeError(
-            f"phase_error_s = {phase_error_s} is not allowed; it must be below half the period {period_s} s, else cycles "
-            "may be miscounted; use the change of the period over the baseline instead"
+            f"phase_error_s = {dt} is not allowed; it must be below half the period {p} s, else "
+            "cycles may be miscounted; use the change of the period over the baseline instead"
         )
     return 2.0 * p * dt / (_positive("baseline_yr", baseline_yr) * YR_S) ** 2
 
