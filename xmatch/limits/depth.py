@@ -155,7 +155,11 @@ def _from_faint_end(band: Band, value: Floats, error: Floats, passed: list[str])
             f"counts of {n} neighbours turn over at {depth:.2f} mag, where completeness begins to fall",
         )
     faintest = float(value.min())
-    beta = (n - 1) / float(np.log(value / faintest).sum())
+    spread = float(np.log(value / faintest).sum())
+    if not spread > 0.0:
+        passed.append("every neighbour has the same flux")
+        return None
+    beta = (n - 1) / spread
     depth = faintest * (1.0 - 1.0 / (n * beta)) if n * beta > 1.0 else faintest
     return _Depth(
         depth,

@@ -89,13 +89,18 @@ def lines(look: Look, width: int) -> Iterator[tuple[str, str]]:
 def _wrap(text: str, width: int, first: str = "", rest: str | None = None, style: str = "") -> Iterator[tuple[str, str]]:
     """Wrap one paragraph with a hanging indent; a word longer than the line is broken rather than run over."""
     rest = " " * len(first) if rest is None else rest
+    if len(first) > 0.6 * width:  # a label too long to hang text from becomes part of the text
+        indent = first[: len(first) - len(first.lstrip())]
+        text, first = f"{first.strip()} {text}", indent
+        rest = indent + "    " if len(rest) > 0.6 * width else rest
     for line in textwrap.wrap(clean(text), width, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False) or [first]:
         yield line, style
 
 
 def _section(title: str, width: int) -> Iterator[tuple[str, str]]:
     yield "", ""
-    yield title.upper()[:width], "bold"
+    head, _, tail = title.partition(" (")
+    yield (head.upper() + (f" ({tail}" if tail else ""))[:width], "bold"
 
 
 def _position(look: Look, width: int) -> Iterator[tuple[str, str]]:
