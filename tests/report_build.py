@@ -57,7 +57,9 @@ def look(findings: tuple[Finding, ...], *, distance: bool = True, name: str = "T
         distance=Distance(1600.0, 4100.0) if distance else None, dm_pc_cm3=148.0, spin=Spin(2711.4, derivative_limit=2.4e-12),
     )  # fmt: skip
     a = resolve(target, Assumptions())
-    bands = [columns.band for catalog in REGISTRY.values() for columns in catalog.bands if columns.band.depth is not None]
+    bands = [
+        columns.band for catalog in REGISTRY.values() for columns in catalog.bands if columns.band.depth is not None
+    ]
     limits = [limit for band in bands if (limit := limit_for_band(band, None, assumptions=a)) is not None]
     base: dict[str, Any] = {
         "target": target, "made_at": "2026-12-01T12:00:00Z", "version": "0", "run_id": 1, "digest": a.digest,

@@ -80,9 +80,7 @@ def loaded_after(code: str) -> set[str]:
 
 
 def test_help_imports_nothing_heavy() -> None:
-    loaded = loaded_after(
-        "from xmatch.cli import main\ntry:\n    main(['--help'])\nexcept SystemExit:\n    pass"
-    )
+    loaded = loaded_after("from xmatch.cli import main\ntry:\n    main(['--help'])\nexcept SystemExit:\n    pass")
     assert "click" in loaded
     assert not loaded & HEAVY
 

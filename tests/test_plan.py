@@ -94,7 +94,9 @@ def test_the_cone_finds_the_fastest_star() -> None:
     assert radius["gaia-dr3"] > FASTEST_STAR_ARCSEC_YR * 10.0
     assert radius["catwise2020"] > FASTEST_STAR_ARCSEC_YR * 10.6
     assert fast_star_arcsec(PLANE, REGISTRY["nvss"]) == 0.0
-    assert fast_star_arcsec(replace(PLANE, position=replace(PLANE.position, epoch_yr=None)), REGISTRY["gaia-dr3"]) == 0.0
+    assert (
+        fast_star_arcsec(replace(PLANE, position=replace(PLANE.position, epoch_yr=None)), REGISTRY["gaia-dr3"]) == 0.0
+    )
 
 
 def test_a_moving_target_widens_the_cone() -> None:

@@ -92,7 +92,9 @@ def test_distances(text: str, low: float, high: float) -> None:
     assert parse_distance(text) == pytest.approx((low, high), rel=1e-5)
 
 
-@pytest.mark.parametrize("text", ["4.1..1.6 kpc", "4", "4 kpc", "1..2", "-1..2 kpc", "0..2 kpc", "1+-2 kpc", "nan..2 kpc", "1..2 miles"])
+@pytest.mark.parametrize(
+    "text", ["4.1..1.6 kpc", "4", "4 kpc", "1..2", "-1..2 kpc", "0..2 kpc", "1+-2 kpc", "nan..2 kpc", "1..2 miles"]
+)
 def test_distances_that_are_refused(text: str) -> None:
     with pytest.raises(TargetError):
         parse_distance(text)
@@ -111,14 +113,18 @@ def test_periods_that_are_refused(text: str) -> None:
         parse_period(text)
 
 
-@pytest.mark.parametrize("text", ["2.1 Jy", "2.1 Jy @ 200 for 35 s", "-1 Jy @ 200 MHz for 35 s", "1 Jy @ 0 MHz for 35 s"])
+@pytest.mark.parametrize(
+    "text", ["2.1 Jy", "2.1 Jy @ 200 for 35 s", "-1 Jy @ 200 MHz for 35 s", "1 Jy @ 0 MHz for 35 s"]
+)
 def test_pulses_that_are_refused(text: str) -> None:
     with pytest.raises(TargetError):
         parse_pulse(text)
 
 
 # radius of a two-dimensional Gaussian, Rayleigh distribution
-@pytest.mark.parametrize(("level", "factor"), [("1 sigma", 1.0), ("2 sigma", 2.0), ("68%", 1.50959), ("90%", 2.14597), ("95 %", 2.44775)])
+@pytest.mark.parametrize(
+    ("level", "factor"), [("1 sigma", 1.0), ("2 sigma", 2.0), ("68%", 1.50959), ("90%", 2.14597), ("95 %", 2.44775)]
+)
 def test_what_an_error_holds(level: str, factor: float) -> None:
     assert sigma_per_axis(3.0, level) == pytest.approx(3.0 / factor, rel=1e-5)
 

@@ -11,7 +11,7 @@ from xmatch.errors import InputError, TargetError
 from xmatch.records import Distance, Position, Pulse, Spin, Target
 from xmatch.target import build_target, read_target, template, write_target
 
-LEAST = '[position]\nra_deg = 10.5\ndec_deg = -20.25\nerror_arcsec = 2.0\n'
+LEAST = "[position]\nra_deg = 10.5\ndec_deg = -20.25\nerror_arcsec = 2.0\n"
 
 
 def written(folder: Path, text: str) -> Path:

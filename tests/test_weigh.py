@@ -16,7 +16,9 @@ from xmatch.weigh import Evidence, chance_of_any, expected_chance_total, finding
 
 REGISTRY = load_catalogs()
 A = Assumptions()
-SOUTH = Target("s", Position(264.50625, -33.81583, 1.5, 1.5, epoch_yr=2026.0), spin=Spin(2711.4), pulses=(Pulse(2e8, 2.1, 35.0),))
+SOUTH = Target(
+    "s", Position(264.50625, -33.81583, 1.5, 1.5, epoch_yr=2026.0), spin=Spin(2711.4), pulses=(Pulse(2e8, 2.1, 35.0),)
+)
 
 
 def search(catalog: Catalog, status: ReplyStatus = ReplyStatus.WHOLE, radius: float | None = None) -> Search:
@@ -27,14 +29,23 @@ def search(catalog: Catalog, status: ReplyStatus = ReplyStatus.WHOLE, radius: fl
 
 
 def rows(
-    catalog: Catalog, n: int, position: Position = SOUTH.position, at: float | None = None, value: float = 20.0, near: float | None = None
+    catalog: Catalog,
+    n: int,
+    position: Position = SOUTH.position,
+    at: float | None = None,
+    value: float = 20.0,
+    near: float | None = None,
 ) -> Rows:
     """A ring of rows well away from the position, and one at a distance if asked."""
     rng = np.random.default_rng(0)
     r, phi = catalog.neighbourhood_arcsec * rng.uniform(0.3, 0.99, n), rng.uniform(0, 2 * np.pi, n)
     east, north, values = r * np.sin(phi), r * np.cos(phi), np.full(n, value)
     if at is not None:
-        east, north, values = np.append(east, at), np.append(north, 0.0), np.append(values, value if near is None else near)
+        east, north, values = (
+            np.append(east, at),
+            np.append(north, 0.0),
+            np.append(values, value if near is None else near),
+        )
     ra, dec = move(position.ra_deg, position.dec_deg, 1e3 * east, 1e3 * north, 1.0)
     n = len(ra)
     nan, half = np.full(n, np.nan), np.full(n, 0.3)
@@ -46,7 +57,11 @@ def rows(
 
 def one(catalog_id: str, found: Rows | None, target: Target = SOUTH, **facts: object) -> Finding:
     catalog = REGISTRY[catalog_id]
-    base: dict[str, object] = {"searches": (search(catalog),) if found is not None else (), "failed": None, "age_s": 10.0}
+    base: dict[str, object] = {
+        "searches": (search(catalog),) if found is not None else (),
+        "failed": None,
+        "age_s": 10.0,
+    }
     return findings(target, [Evidence(catalog=catalog, rows=found, **(base | facts))], A)[0]  # type: ignore[arg-type]
 
 

@@ -91,9 +91,7 @@ class UnansweredError(ArchiveError):
         HTTP status, when a status line came at all.
     """
 
-    def __init__(
-        self, message: str, *, retry_after_s: float | None = None, http_status: int | None = None
-    ) -> None:
+    def __init__(self, message: str, *, retry_after_s: float | None = None, http_status: int | None = None) -> None:
         super().__init__(message)
         self.retry_after_s = retry_after_s
         self.http_status = http_status

@@ -252,11 +252,7 @@ def _gather(
                 used.append(replace(step.known, from_store=True))
             else:
                 complete = False
-        rows = (
-            join(store.rows_of([search.search_id], catalog.band_list) for search in used)
-            if used
-            else None
-        )
+        rows = join(store.rows_of([search.search_id], catalog.band_list) for search in used) if used else None
         evidence.append(
             Evidence(
                 catalog=catalog,

@@ -136,8 +136,7 @@ def _answer_in_store(question: Question, least: float, stored: list[Search]) -> 
         search
         for search in stored
         if search.status is ReplyStatus.WHOLE
-        and (search.catalog_id, search.release, search.table)
-        == (question.catalog_id, question.release, question.table)
+        and (search.catalog_id, search.release, search.table) == (question.catalog_id, question.release, question.table)
         and search.radius_arcsec >= least
         and separation_arcsec(search.ra_deg, search.dec_deg, question.ra_deg, question.dec_deg) < SAME_CENTRE_ARCSEC
     ]

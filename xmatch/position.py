@@ -61,7 +61,9 @@ def parse_position(text: str) -> tuple[float, float]:
     if sexagesimal:
         dec_match = _COLON.match(dec) or _DMS.match(dec)
         if dec_match is None:
-            raise PositionError(f"declination {dec!r} does not go with {ra!r}: it could be degrees or a typing slip; {ADVICE}")
+            raise PositionError(
+                f"declination {dec!r} does not go with {ra!r}: it could be degrees or a typing slip; {ADVICE}"
+            )
         return _check(text, HOURS_TO_DEG * _sexagesimal(ra, sexagesimal, 24), _sexagesimal(dec, dec_match, 91))
     ra_match, dec_match = _DEGREES.match(ra.lower()), _DEGREES.match(dec.lower())
     if ra_match is None or dec_match is None:
@@ -76,7 +78,9 @@ def _sexagesimal(word: str, match: re.Match[str], limit: int) -> float:
     """Value of a sexagesimal word; the sign counts also before a zero."""
     first, minutes, seconds = int(match[2]), int(match[3]), float(match[4] or 0.0)
     if first >= limit or minutes >= 60 or seconds >= 60.0:
-        raise PositionError(f"{word!r} is out of range; the first part must be below {limit}, minutes and seconds below 60")
+        raise PositionError(
+            f"{word!r} is out of range; the first part must be below {limit}, minutes and seconds below 60"
+        )
     value = first + minutes / 60.0 + seconds / 3600.0
     return -value if match[1] == "-" else value
 
@@ -103,9 +107,7 @@ def _ambiguous(text: str, words: list[str]) -> str:
         degrees = f"{ra:.6g} {dec:+.6g} deg"
     except ValueError:
         return f"{text!r} is not a position; {ADVICE}"
-    return (
-        f"{text!r} can be read in two ways: right ascension in hours gives {hours}, in degrees gives {degrees}; {ADVICE}"
-    )
+    return f"{text!r} can be read in two ways: right ascension in hours gives {hours}, in degrees gives {degrees}; {ADVICE}"
 
 
 def format_position(ra_deg: float, dec_deg: float) -> str:
@@ -183,7 +185,9 @@ def parse_pulse(text: str) -> tuple[float, float, float]:
     """Read a pulse, ``2.1 Jy @ 200 MHz for 35 s``: frequency in Hz, peak in Jy, width in s."""
     match = re.match(r"^(.+?)@(.+?)\bfor\b(.+)$", text)
     if match is None:
-        raise TargetError(f"pulse {text!r} is not understood; write peak @ frequency for width, such as '2.1 Jy @ 200 MHz for 35 s'")
+        raise TargetError(
+            f"pulse {text!r} is not understood; write peak @ frequency for width, such as '2.1 Jy @ 200 MHz for 35 s'"
+        )
     return (
         _with_unit("pulse frequency", match[2], _HZ, "200 MHz"),
         _with_unit("pulse peak", match[1], _JY, "2.1 Jy"),
@@ -209,7 +213,9 @@ def sigma_per_axis(length_arcsec: float, level: str) -> float:
         raise PositionError(f"position error {length_arcsec:g} arcsec is not allowed; it must be above 0")
     match = _LEVEL.match(level.strip())
     if match is None:
-        raise PositionError(f"error level {level!r} is not understood; give '1 sigma' (per axis) or a fraction such as '90%'")
+        raise PositionError(
+            f"error level {level!r} is not understood; give '1 sigma' (per axis) or a fraction such as '90%'"
+        )
     value = float(match[1])
     if match[2] == "sigma":
         if not value > 0.0:
@@ -228,8 +234,12 @@ def parse_error(text: str, level: str) -> tuple[float, float, float]:
     except ValueError:
         values = []
     if len(values) not in (1, 3):
-        raise PositionError(f"position error {text!r} is not understood; give a radius, or 'major,minor,angle' in arcsec and degrees")
-    return check_ellipse(values[0], values[-2] if len(values) == 3 else values[0], values[2] if len(values) == 3 else 0.0, level)
+        raise PositionError(
+            f"position error {text!r} is not understood; give a radius, or 'major,minor,angle' in arcsec and degrees"
+        )
+    return check_ellipse(
+        values[0], values[-2] if len(values) == 3 else values[0], values[2] if len(values) == 3 else 0.0, level
+    )
 
 
 def check_ellipse(major: float, minor: float, angle_deg: float, level: str) -> tuple[float, float, float]:

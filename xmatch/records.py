@@ -17,12 +17,26 @@ from numpy.typing import NDArray
 # the words are part of the nouns: rooms import both from here
 from xmatch.vocabulary import (
     LimitKind as LimitKind,
+)
+from xmatch.vocabulary import (
     LimitMethod as LimitMethod,
+)
+from xmatch.vocabulary import (
     MagnitudeSystem as MagnitudeSystem,
+)
+from xmatch.vocabulary import (
     Outcome as Outcome,
+)
+from xmatch.vocabulary import (
     Quantity as Quantity,
+)
+from xmatch.vocabulary import (
     ReplyStatus as ReplyStatus,
+)
+from xmatch.vocabulary import (
     StandingWord as StandingWord,
+)
+from xmatch.vocabulary import (
     Waveband as Waveband,
 )
 

@@ -36,7 +36,7 @@ EPOCHS = (1850.0, 2150.0)
 
 def template() -> str:
     """A commented target file to fill in."""
-    return '''# What is known of one object. Delete what is not known: nothing is guessed in its place.
+    return """# What is known of one object. Delete what is not known: nothing is guessed in its place.
 
 [target]
 name = "mine"
@@ -76,7 +76,7 @@ may_be_orbital = false
 frequency_mhz = 200.0
 peak_jy = 2.1
 width_s = 35.0
-'''
+"""
 
 
 def read_target(path: str | Path) -> Target:
@@ -121,10 +121,14 @@ def build_target(
     ra, dec = read.parse_position(where)
     level = error_level or DEFAULT_LEVEL
     major, minor, angle = read.parse_error(error or DEFAULT_ERROR, level)
-    stated = f"{where}, error {error or DEFAULT_ERROR} arcsec ({level}{'' if error else ', our default: none was given'})"
+    stated = (
+        f"{where}, error {error or DEFAULT_ERROR} arcsec ({level}{'' if error else ', our default: none was given'})"
+    )
     spin = None
     if period is not None:
-        spin = _spin(read.parse_period(period), derivative, derivative_limit, "given on the command line", period_may_be_orbital)
+        spin = _spin(
+            read.parse_period(period), derivative, derivative_limit, "given on the command line", period_may_be_orbital
+        )
     elif derivative is not None or derivative_limit is not None:
         raise TargetError("a period derivative was given without a period; give --period too")
     return Target(
@@ -156,7 +160,13 @@ def write_target(target: Target) -> str:
         lines.append(f"epoch = {p.epoch_yr!r}")
     if target.distance is not None:
         d = target.distance
-        lines += ["", "[distance]", f'low = "{d.low_pc!r} pc"', f'high = "{d.high_pc!r} pc"', f"origin = {_toml(d.origin)}"]
+        lines += [
+            "",
+            "[distance]",
+            f'low = "{d.low_pc!r} pc"',
+            f'high = "{d.high_pc!r} pc"',
+            f"origin = {_toml(d.origin)}",
+        ]
     if target.dm_pc_cm3 is not None:
         lines += ["", "[dispersion]", f"dm_pc_cm3 = {target.dm_pc_cm3!r}"]
     if target.column_cm2 is not None or target.av_mag is not None:
@@ -168,10 +178,20 @@ def write_target(target: Target) -> str:
     if target.spin is not None:
         s = target.spin
         lines += ["", "[spin]", f"period_s = {s.period_s!r}"]
-        lines += [f"{key} = {value!r}" for key, value in (("derivative", s.derivative), ("derivative_limit", s.derivative_limit)) if value is not None]
+        lines += [
+            f"{key} = {value!r}"
+            for key, value in (("derivative", s.derivative), ("derivative_limit", s.derivative_limit))
+            if value is not None
+        ]
         lines += [f"origin = {_toml(s.derivative_origin)}", f"may_be_orbital = {str(s.may_be_orbital).lower()}"]
     for pulse in target.pulses:
-        lines += ["", "[[pulses]]", f"frequency_mhz = {pulse.nu_hz / 1e6!r}", f"peak_jy = {pulse.peak_jy!r}", f"width_s = {pulse.width_s!r}"]
+        lines += [
+            "",
+            "[[pulses]]",
+            f"frequency_mhz = {pulse.nu_hz / 1e6!r}",
+            f"peak_jy = {pulse.peak_jy!r}",
+            f"width_s = {pulse.width_s!r}",
+        ]
     return "\n".join(lines) + "\n"
 
 
@@ -183,7 +203,9 @@ def _toml(text: str) -> str:
 def _from_sections(content: dict[str, Any], stem: str) -> Target:
     for section, value in content.items():
         if section not in SECTIONS:
-            raise TargetError(f"section [{section}] is not known{_near(section, SECTIONS)}; there are {', '.join(SECTIONS)}")
+            raise TargetError(
+                f"section [{section}] is not known{_near(section, SECTIONS)}; there are {', '.join(SECTIONS)}"
+            )
         for entry in value if section == "pulses" and isinstance(value, list) else [value]:
             if not isinstance(entry, dict):
                 raise TargetError(f"{section} = {entry!r} is not allowed; write it as a section with keys")
@@ -224,7 +246,9 @@ def _position(section: dict[str, Any]) -> Position:
         raise TargetError("position needs either ra and dec (text) or ra_deg and dec_deg (numbers), both of a pair")
     level = _text("position", section, "error_level") or DEFAULT_LEVEL
     round_error = _number("position", section, "error_arcsec")
-    axes = [_number("position", section, key) for key in ("error_major_arcsec", "error_minor_arcsec", "error_angle_deg")]
+    axes = [
+        _number("position", section, key) for key in ("error_major_arcsec", "error_minor_arcsec", "error_angle_deg")
+    ]
     if round_error is not None and axes != [None, None, None]:
         raise TargetError("position has both error_arcsec and an error ellipse; give one of them")
     if round_error is not None:
@@ -234,8 +258,12 @@ def _position(section: dict[str, Any]) -> Position:
         major, minor, angle = read.check_ellipse(axes[0], axes[1], axes[2] or 0.0, level)
         error = f"error {axes[0]:g} x {axes[1]:g} arcsec at {axes[2] or 0.0:g} deg"
     else:
-        raise TargetError("position needs error_arcsec, or error_major_arcsec and error_minor_arcsec: a match without an error means nothing")
-    return Position(ra, dec, major, minor, angle, _epoch(_number("position", section, "epoch")), f"{where}, {error} ({level})")
+        raise TargetError(
+            "position needs error_arcsec, or error_major_arcsec and error_minor_arcsec: a match without an error means nothing"
+        )
+    return Position(
+        ra, dec, major, minor, angle, _epoch(_number("position", section, "epoch")), f"{where}, {error} ({level})"
+    )
 
 
 def _distance(section: dict[str, Any]) -> Distance:
@@ -245,7 +273,7 @@ def _distance(section: dict[str, Any]) -> Distance:
         ends = [_number("distance", section, key) for key in ("low_kpc", "high_kpc")]
         low, high = (1.0e3 * (end or 0.0) for end in ends)
     else:
-        raise TargetError("distance needs low and high with units, such as low = \"1.6 kpc\", or low_kpc and high_kpc")
+        raise TargetError('distance needs low and high with units, such as low = "1.6 kpc", or low_kpc and high_kpc')
     return Distance(*read.check_distance(low, high), _text("distance", section, "origin"))
 
 
@@ -261,7 +289,9 @@ def _spin_section(section: dict[str, Any]) -> Spin:
         if limit is not None:
             raise TargetError("spin has a derivative_limit and a period change; give one of them")
         if not (change > 0.0 and baseline > 0.0):
-            raise TargetError(f"spin: a change of {change:g} ms over {baseline:g} yr is not allowed; both must be above 0")
+            raise TargetError(
+                f"spin: a change of {change:g} ms over {baseline:g} yr is not allowed; both must be above 0"
+            )
         limit = change / 1.0e3 / (baseline * YR_S)
     orbital = section.get("may_be_orbital", False)
     if not isinstance(orbital, bool):

@@ -76,9 +76,7 @@ def findings(target: Target, evidence: Sequence[Evidence], assumptions: Assumpti
             weighed[item.catalog.id] = weigh(
                 target.position, item.rows, radius_arcsec=radius, assumptions=assumptions, distance_pc=distance_pc
             )
-    return tuple(
-        _finding(target, item, weighed.get(item.catalog.id), weighed, assumptions) for item in evidence
-    )
+    return tuple(_finding(target, item, weighed.get(item.catalog.id), weighed, assumptions) for item in evidence)
 
 
 def _global_chance(own: Weighed, all_weighed: Mapping[str, Weighed]) -> float:
@@ -165,7 +163,10 @@ def _position_says(
         return Outcome.COVERAGE_UNKNOWN, why
     if fraction < COVERED:
         return Outcome.PARTLY_COVERED, f"the footprint holds {fraction:.0%} of the error region; no row in that part"
-    return Outcome.BLANK, f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}{_fast(item, own)}"
+    return (
+        Outcome.BLANK,
+        f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}{_fast(item, own)}",
+    )
 
 
 def _fast(item: Evidence, own: Weighed) -> str:

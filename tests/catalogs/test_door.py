@@ -108,10 +108,7 @@ def gaia() -> Reply:
         "pmDE": column([0.0, 7.0], "mas/yr", [True, False]),
         "e_pmRA": column([0.0, 0.1], "mas/yr", [True, False]),
         "e_pmDE": column([0.0, 0.1], "mas/yr", [True, False]),
-    } | {
-        name: column([18.0, 19.0], "mag")
-        for name in ("Gmag", "e_Gmag", "BPmag", "e_BPmag", "RPmag", "e_RPmag")
-    }
+    } | {name: column([18.0, 19.0], "mag") for name in ("Gmag", "e_Gmag", "BPmag", "e_BPmag", "RPmag", "e_RPmag")}
     return reply(REGISTRY["gaia-dr3"], columns)
 
 
@@ -143,9 +140,7 @@ def twomass(**changes: Column) -> Reply:
         "errPA": column([45.0, 45.0], "deg"),
         "JD": column([2451545.0, 2451910.25], "d"),
         "Qflg": column(["UAA", "AAA"]),
-    } | {
-        name: column([14.0, 15.0], "mag") for name in ("Jmag", "e_Jmag", "Hmag", "e_Hmag", "Kmag", "e_Kmag")
-    }
+    } | {name: column([14.0, 15.0], "mag") for name in ("Jmag", "e_Jmag", "Hmag", "e_Hmag", "Kmag", "e_Kmag")}
     return reply(REGISTRY["2mass-psc"], columns | changes)
 
 

@@ -93,7 +93,7 @@ def test_sexagesimal_tables_are_asked_for_decimal_positions() -> None:
         ("row_limit = 5000", "row_limit = 0", ["neighbourhood.row_limit", "0", "from 10"]),
         ("low = 1.1540", "low = 9.0", ["bands[0].low", "9.0", "low < high"]),
         ('protocol = "vizier"', 'protocol = "gopher"', ["tables[0].protocol", "'gopher'", "cone, vizier"]),
-        ('value = 15.8, n_sigma = 10.0', "value = 15.8", ["depth", "n_sigma or completeness"]),
+        ("value = 15.8, n_sigma = 10.0", "value = 15.8", ["depth", "n_sigma or completeness"]),
         ('cite = ["2006AJ....131.1163S", "2003yCat.2246....0C"]', "cite = []", ["cite", "bibcodes"]),
         ('id = "2mass-psc"', 'id = "2mass"', ["id", "'2mass'", "'2mass-psc'"]),
     ],
@@ -108,7 +108,10 @@ def test_a_fault_names_file_key_value_and_what_is_allowed(tmp_path: Path, old: s
 
 
 def test_a_fact_without_source_does_not_load(tmp_path: Path) -> None:
-    text = GOOD.replace('[coverage]\nkind = "all sky"\nsource = "2006AJ....131.1163S (99.998 % of the sky)"', '[coverage]\nkind = "all sky"')
+    text = GOOD.replace(
+        '[coverage]\nkind = "all sky"\nsource = "2006AJ....131.1163S (99.998 % of the sky)"',
+        '[coverage]\nkind = "all sky"',
+    )
     assert text != GOOD
     with pytest.raises(FactError, match="every fact needs a source"):
         read_catalog(written(tmp_path, text))

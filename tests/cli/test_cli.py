@@ -169,7 +169,11 @@ def test_an_unforeseen_fault_is_explained_without_a_traceback(tmp_path: Path, mo
         "xmatch.cli.main(['broken'])\n"
     )
     done = subprocess.run(
-        [sys.executable, "-c", code], capture_output=True, text=True, check=False, env=os.environ | {"TMPDIR": str(tmp_path)}
+        [sys.executable, "-c", code],
+        capture_output=True,
+        text=True,
+        check=False,
+        env=os.environ | {"TMPDIR": str(tmp_path)},
     )
     assert done.returncode == EXIT_FAULT
     assert "Traceback" not in done.stderr
@@ -205,5 +209,7 @@ def test_ctrl_c_exits_cleanly_with_what_was_learnt(archive: Any, tmp_path: Path)
     assert process.returncode == EXIT_INTERRUPTED
     assert "kept" in rest and "Traceback" not in rest
     archive.behave()
-    answer = json.loads(run("look", TARGET, "--json", "--store", str(store), BLANKFIELD_ARCHIVES=archive.address).stdout)
+    answer = json.loads(
+        run("look", TARGET, "--json", "--store", str(store), BLANKFIELD_ARCHIVES=archive.address).stdout
+    )
     assert answer["n_asked"] == 1

@@ -70,7 +70,9 @@ def test_an_xray_limit_is_corrected_and_says_by_what() -> None:
     assert p.flux_cgs == limit_of(XRAY).value
     assert p.corrected_flux_cgs == pytest.approx(p.flux_cgs / p.transmitted)
     assert "photon index 2" in p.note and "4.4e+21" in p.note and "its flux is taken as the observed one" in p.note
-    assert p.luminosity_erg_s == pytest.approx([p.corrected_flux_cgs * float(sphere_cm2(d)) for d in (1600.0, (1600 * 4100) ** 0.5, 4100.0)])
+    assert p.luminosity_erg_s == pytest.approx(
+        [p.corrected_flux_cgs * float(sphere_cm2(d)) for d in (1600.0, (1600 * 4100) ** 0.5, 4100.0)]
+    )
 
 
 def test_a_blind_band_gives_no_corrected_flux() -> None:

@@ -20,7 +20,9 @@ def test_a_gaussian_bound_is_positive_and_grows_with_confidence(value: float, si
 
 
 @given(st.integers(0, 60), st.floats(0.0, 40.0), st.floats(0.5, 0.99))
-def test_the_shortest_interval_is_ordered_and_inside_the_one_sided_bound(n: int, background: float, level: float) -> None:
+def test_the_shortest_interval_is_ordered_and_inside_the_one_sided_bound(
+    n: int, background: float, level: float
+) -> None:
     low, high = (float(v) for v in counts.kraft_interval(n, background, level))
     assert 0.0 <= low < high < np.inf
     one_sided = float(counts.bayesian_upper(n, background, level))
@@ -63,7 +65,7 @@ def test_more_beams_raise_the_threshold() -> None:
     ],
 )
 def test_values_outside_validity_are_refused(call: object) -> None:
-    with pytest.raises(RangeError, match="needed|allowed|must be"):
+    with pytest.raises(RangeError, match=r"needed|allowed|must be"):
         call()  # type: ignore[operator]
 
 

@@ -71,7 +71,9 @@ def test_too_few_neighbours_fall_back_to_the_nominal_depth_and_say_why() -> None
 def test_quoted_errors_that_end_before_five_sigma_are_not_extrapolated() -> None:
     rng = np.random.default_rng(6)
     m = rng.uniform(12.0, 17.0, 200)
-    limit = limit_for_band(replace(KS, depth=None, depth_n_sigma=None), photometry(m, 0.002 * 10 ** (0.2 * (m - 12))), assumptions=A)
+    limit = limit_for_band(
+        replace(KS, depth=None, depth_n_sigma=None), photometry(m, 0.002 * 10 ** (0.2 * (m - 12))), assumptions=A
+    )
     assert limit is not None and limit.method is LimitMethod.LOCAL_FAINT_END
     assert "beyond the faintest neighbours" in limit.note
 

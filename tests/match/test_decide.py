@@ -145,7 +145,10 @@ def test_the_posterior_is_calibrated_in_simulated_fields() -> None:
         listed = rng.uniform() < A.listed_fraction
         if listed:
             sigma = np.sqrt(1.0 + 0.09 + 0.0025)
-            east, north = np.append(east, sigma * rng.standard_normal()), np.append(north, sigma * rng.standard_normal())
+            east, north = (
+                np.append(east, sigma * rng.standard_normal()),
+                np.append(north, sigma * rng.standard_normal()),
+            )
         if not len(east):
             continue
         odds = weigh(HERE, rows(east, north), radius_arcsec=60.0, assumptions=A).odds

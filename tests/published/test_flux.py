@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import warnings
+from itertools import pairwise
 from typing import Any
 
 import astropy.units as u
@@ -74,7 +75,7 @@ def test_the_ab_zero_point_against_a_photometry_library() -> None:
         import pyphot
 
         theirs = float(pyphot.get_library()["PS1_r"].AB_zero_Jy.to("Jy").value)
-    assert magnitudes.AB_ZERO_JY == pytest.approx(theirs, rel=2e-4)
+    assert pytest.approx(theirs, rel=2e-4) == magnitudes.AB_ZERO_JY
     assert float(magnitudes.ab_to_jy(20.0)) == pytest.approx((20.0 * u.ABmag).to(u.Jy).value, rel=1e-5)
 
 
@@ -86,7 +87,9 @@ def test_extinction_against_dust_extinction(r_v: float) -> None:
         from dust_extinction.parameter_averages import CCM89, G23
 
     um = np.geomspace(0.12, 30.0, 400)
-    assert extinction.extinction_ratio(um, r_v=r_v) == pytest.approx(np.asarray(G23(Rv=r_v)(um * u.um)), rel=5e-3, abs=2e-4)
+    assert extinction.extinction_ratio(um, r_v=r_v) == pytest.approx(
+        np.asarray(G23(Rv=r_v)(um * u.um)), rel=5e-3, abs=2e-4
+    )
     if r_v == 3.1:
         optical = np.geomspace(0.32, 3.2, 200)
         mine = extinction.extinction_ratio(optical, law=extinction.LAWS[1])
@@ -94,7 +97,9 @@ def test_extinction_against_dust_extinction(r_v: float) -> None:
 
 
 # Gordon et al. 2023, ApJ 950, 86, evaluated at the bands by dust_extinction 1.7
-@pytest.mark.parametrize(("um", "ratio"), [(1.235, 0.2740), (1.662, 0.1661), (2.159, 0.1066), (0.617, 0.873), (3.35, 0.049)])
+@pytest.mark.parametrize(
+    ("um", "ratio"), [(1.235, 0.2740), (1.662, 0.1661), (2.159, 0.1066), (0.617, 0.873), (3.35, 0.049)]
+)
 def test_extinction_ratios_of_the_common_bands(um: float, ratio: float) -> None:
     assert float(extinction.extinction_ratio(um)) == pytest.approx(ratio, rel=5e-3)
 
@@ -111,7 +116,9 @@ def test_the_packaged_cross_section_is_its_element_sum() -> None:
 @pytest.mark.parametrize("band", [(0.2, 2.3), (0.3, 10.0), (2.0, 10.0)])
 @pytest.mark.parametrize("spectrum", [spectra.PowerLaw(1.7), spectra.PowerLaw(2.0), spectra.Blackbody(0.3)], ids=str)
 @pytest.mark.parametrize("n_h", [0.0, 1.0e20, 3.0e21, 2.0e22])
-def test_transmission_against_adaptive_quadrature(band: tuple[float, float], spectrum: spectra.Spectrum, n_h: float) -> None:
+def test_transmission_against_adaptive_quadrature(
+    band: tuple[float, float], spectrum: spectra.Spectrum, n_h: float
+) -> None:
     edges = [e for e in (0.2842, 0.5431, 0.7068, 0.8447, 0.8702, 1.3030, 1.839, 2.472, 7.112) if band[0] < e < band[1]]
 
     def integral(n: float) -> float:
@@ -120,7 +127,7 @@ def test_transmission_against_adaptive_quadrature(band: tuple[float, float], spe
             return float(e * spectrum.energy_flux(e) * np.exp(-n * absorption.cross_section_cm2(e)))
 
         cuts = np.log([band[0], *edges, band[1]])
-        return sum(quad(integrand, a, b, limit=400, epsabs=0.0, epsrel=1e-9)[0] for a, b in zip(cuts, cuts[1:], strict=False))
+        return sum(quad(integrand, a, b, limit=400, epsabs=0.0, epsrel=1e-9)[0] for a, b in pairwise(cuts))
 
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # quad complains at the kinks of the interpolated table
@@ -133,5 +140,5 @@ def test_four_pi_d_squared_f_with_astropy_units() -> None:
     flux, d = 3.0e-13, 2560.0
     theirs = (4 * np.pi * (d * u.pc) ** 2 * flux * u.erg / u.s / u.cm**2).to(u.erg / u.s).value
     assert float(luminosity.luminosity_erg_s(flux, d)) == pytest.approx(theirs, rel=1e-12)
-    assert luminosity.KPC2_MJY_ERG_S_HZ == pytest.approx(4 * np.pi * KPC_CM**2 * 1e-26, rel=1e-12)
-    assert luminosity.KPC2_MJY_ERG_S_HZ == pytest.approx(1.1964951828635e18, rel=1e-9)  # astropy 8.0.2
+    assert pytest.approx(4 * np.pi * KPC_CM**2 * 1e-26, rel=1e-12) == luminosity.KPC2_MJY_ERG_S_HZ
+    assert pytest.approx(1.1964951828635e18, rel=1e-9) == luminosity.KPC2_MJY_ERG_S_HZ  # astropy 8.0.2

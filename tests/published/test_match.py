@@ -13,7 +13,9 @@ from scipy.stats import rayleigh
 
 from xmatch.match import chance, ellipse, motion, odds, separation
 
-FUNCTIONS = {name: getattr(module, name) for module in (chance, ellipse, motion, odds, separation) for name in dir(module)}
+FUNCTIONS = {
+    name: getattr(module, name) for module in (chance, ellipse, motion, odds, separation) for name in dir(module)
+}
 
 
 def value(quantity: str, inputs: dict[str, Any]) -> Any:
@@ -42,7 +44,9 @@ def test_radius_factor_is_the_rayleigh_quantile(level: float) -> None:
 
 
 # astropy 8: SkyCoord.separation and SkyCoord.spherical_offsets_to's great-circle length
-@pytest.mark.parametrize(("ra0", "dec0"), [(0.0, 0.0), (359.9999, 45.0), (10.0, 89.9995), (200.0, -90.0), (264.5, -33.8)])
+@pytest.mark.parametrize(
+    ("ra0", "dec0"), [(0.0, 0.0), (359.9999, 45.0), (10.0, 89.9995), (200.0, -90.0), (264.5, -33.8)]
+)
 def test_offsets_have_the_length_and_angle_of_the_great_circle(ra0: float, dec0: float) -> None:
     rng = np.random.default_rng(5)
     centre = SkyCoord(ra0, dec0, unit="deg")
@@ -71,7 +75,9 @@ def test_motion_agrees_with_astropy_also_near_a_pole_and_across_ra_zero() -> Non
         warnings.simplefilter("ignore")  # it warns that such a small parallax is set to its own floor
         moved = start.apply_space_motion(new_obstime=Time(2026.0, format="jyear"))
     mine = motion.move(ra, dec, pm_ra, pm_dec, 26.0)
-    assert SkyCoord(*mine, unit="deg").separation(SkyCoord(moved.ra, moved.dec)).mas == pytest.approx(np.zeros(4), abs=1.0)
+    assert SkyCoord(*mine, unit="deg").separation(SkyCoord(moved.ra, moved.dec)).mas == pytest.approx(
+        np.zeros(4), abs=1.0
+    )
 
 
 def test_elliptical_factor_is_the_circular_one_for_round_errors() -> None:

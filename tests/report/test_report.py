@@ -52,7 +52,9 @@ def test_every_outcome_is_said_in_the_first_line_and_below(word: Outcome) -> Non
 
 @pytest.mark.parametrize("width", [60, 72, 80, 100, 104, 160, 200])
 def test_no_line_is_wider_than_the_terminal(width: int) -> None:
-    found = look((finding("gaia-dr3", Outcome.CHANCE, candidates=(candidate("gaia-dr3", "x" * 300),)), *BLANKS), name="n" * 150)
+    found = look(
+        (finding("gaia-dr3", Outcome.CHANCE, candidates=(candidate("gaia-dr3", "x" * 300),)), *BLANKS), name="n" * 150
+    )
     assert max(len(line) for line, _ in lines(found, width)) <= width
 
 
@@ -71,7 +73,10 @@ def test_a_pipe_gets_plain_text_and_a_terminal_the_same_words(width: int) -> Non
 
 
 def test_what_an_archive_names_cannot_reach_the_terminal_raw() -> None:
-    found = look((finding("gaia-dr3", Outcome.AMBIGUOUS, candidates=(candidate("gaia-dr3", HOSTILE),), why=HOSTILE),), name=HOSTILE)
+    found = look(
+        (finding("gaia-dr3", Outcome.AMBIGUOUS, candidates=(candidate("gaia-dr3", HOSTILE),), why=HOSTILE),),
+        name=HOSTILE,
+    )
     shown = io.StringIO()
     render(found, Console(file=shown, width=100))
     assert not set(shown.getvalue()) & set("\x1b\x07\r\u202e")
@@ -86,7 +91,14 @@ def test_without_a_distance_it_says_so() -> None:
 def test_every_number_of_a_limit_stands_with_its_meaning_and_the_assumptions() -> None:
     limit = look(BLANKS).limits[-1].limit
     said = text(look((*BLANKS, finding("vlass-ql1", Outcome.BLANK, limits=(limit,)))), 160)
-    for part in ("95% of such sources are listed", "photon index 2", "He, Ng & Kaspi 2013", "Gordon et al. 2023", "isotropic", "log-uniform"):
+    for part in (
+        "95% of such sources are listed",
+        "photon index 2",
+        "He, Ng & Kaspi 2013",
+        "Gordon et al. 2023",
+        "isotropic",
+        "log-uniform",
+    ):
         assert part in " ".join(said.split())
 
 
@@ -97,7 +109,16 @@ def test_survival_is_never_zero() -> None:
 
 
 @pytest.mark.parametrize(
-    ("value", "shown"), [(0.0, "0"), (1.234, "1.2"), (123.4, "123"), (1.2345e-13, "1.2e-13"), (4.4e21, "4.4e21"), (None, "-"), (float("nan"), "-")]
+    ("value", "shown"),
+    [
+        (0.0, "0"),
+        (1.234, "1.2"),
+        (123.4, "123"),
+        (1.2345e-13, "1.2e-13"),
+        (4.4e21, "4.4e21"),
+        (None, "-"),
+        (float("nan"), "-"),
+    ],
 )
 def test_numbers(value: float | None, shown: str) -> None:
     assert number(value) == shown
@@ -110,7 +131,12 @@ def test_ages_and_spans() -> None:
 
 
 def test_json_is_complete_and_finite() -> None:
-    found = look((finding("gaia-dr3", Outcome.CHANCE, candidates=(candidate("gaia-dr3"),), coverage_fraction=float("nan")), *BLANKS))
+    found = look(
+        (
+            finding("gaia-dr3", Outcome.CHANCE, candidates=(candidate("gaia-dr3"),), coverage_fraction=float("nan")),
+            *BLANKS,
+        )
+    )
     body = json.loads(json.dumps(to_json(found), allow_nan=False))
     assert body["format"] == FORMAT and body["format_version"] == 1
     assert {field.name for field in fields(Look)} <= body.keys()

@@ -33,9 +33,7 @@ _UNIT_FORMATS = (None, "cds", "vounit")
 _decoding = Lock()
 
 
-def decode(
-    raw: bytes, skeleton: Skeleton, table: TableHead, question: Question
-) -> tuple[dict[str, Column], str]:
+def decode(raw: bytes, skeleton: Skeleton, table: TableHead, question: Question) -> tuple[dict[str, Column], str]:
     """Decode the scalar columns of a table and hold the wanted ones against the question.
 
     Parameters

@@ -56,9 +56,7 @@ def ask(question: Question, transport: Transport) -> Reply:
     return _reply(_exchange(question, request_of(question), transport, Stop()), transport)
 
 
-def ask_all(
-    questions: Sequence[Question], transport: Transport, *, on_event: OnEvent | None = None
-) -> Iterator[Reply]:
+def ask_all(questions: Sequence[Question], transport: Transport, *, on_event: OnEvent | None = None) -> Iterator[Reply]:
     """Put many questions at once and yield the judged replies as they come.
 
     Parameters
@@ -223,9 +221,7 @@ def _client(transport: Transport) -> str:
     return f"blankfield {__version__}; {_libraries()}{instead}"
 
 
-def _run(
-    prepared: list[tuple[Question, Request]], transport: Transport, on_event: OnEvent | None
-) -> Iterator[Reply]:
+def _run(prepared: list[tuple[Question, Request]], transport: Transport, on_event: OnEvent | None) -> Iterator[Reply]:
     if not prepared:
         return
     stop = Stop()

@@ -145,9 +145,7 @@ class _Door:
             major, minor, angle = axes(sigma_ra**2, sigma_dec**2, rho * sigma_ra * sigma_dec)
         else:
             radius = self.angle_arcsec(error.columns[0])
-            sigma = (
-                sigma_from_radius(radius, error.level) if error.level is not None else sigma_from_radial(radius)
-            )
+            sigma = sigma_from_radius(radius, error.level) if error.level is not None else sigma_from_radial(radius)
             major, minor, angle = sigma, sigma.copy(), zero
         major, minor = (_fill_with_worst(axis) for axis in (np.asarray(major), np.asarray(minor)))
         floor = error.floor_arcsec

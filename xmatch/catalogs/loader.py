@@ -173,7 +173,9 @@ class _Reader:
     def word(self, where: str, content: dict[str, Any], key: str, words: type[W]) -> W:
         return words(self.choice(where, content, key, [str(word) for word in words]))
 
-    def pair(self, where: str, content: dict[str, Any], key: str, low: float, high: float) -> tuple[float, float] | None:
+    def pair(
+        self, where: str, content: dict[str, Any], key: str, low: float, high: float
+    ) -> tuple[float, float] | None:
         if key not in content:
             return None
         value = content[key]
@@ -313,7 +315,9 @@ class _Reader:
             raise self.fault(f"{where}.level", level, "a radius needs the fraction it holds (0 to 1); others have none")
         floor = self.number(where, error, "floor_arcsec", low=0.0, default=0.0)
         if meaning is ErrorMeaning.NONE and floor == 0.0:
-            raise self.fault(f"{where}.floor_arcsec", floor, "without error columns a floor above 0 must stand for them")
+            raise self.fault(
+                f"{where}.floor_arcsec", floor, "without error columns a floor above 0 must stand for them"
+            )
         return ErrorColumns(
             meaning=meaning,
             columns=tuple(self.text(where, error, key) for key in needed),
@@ -328,7 +332,9 @@ class _Reader:
         motion = self.section(where, content, ("ra", "dec", "ra_error", "dec_error", "cosdec", "source"))
         cosdec = motion.get("cosdec")
         if not isinstance(cosdec, bool):
-            raise self.fault(f"{where}.cosdec", cosdec, "say true when the RA motion holds the factor cos(dec), or false")
+            raise self.fault(
+                f"{where}.cosdec", cosdec, "say true when the RA motion holds the factor cos(dec), or false"
+            )
         return MotionColumns(
             ra=self.text(where, motion, "ra"),
             dec=self.text(where, motion, "dec"),

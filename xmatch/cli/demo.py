@@ -14,12 +14,29 @@ from xmatch.cli.options import width_option
 
 @click.command("demo")
 @click.option("--store", metavar="FILE", help="Keep the demo's store here; by default it is thrown away.")
-@click.option("--write-target", metavar="FOLDER", type=click.Path(file_okay=False, path_type=Path), help="Also write the demo's target file here.")
-@click.option("--trouble", metavar="CATALOG=FAULT", multiple=True, help="Make an archive misbehave, such as 'nvss=html' or 'vlass-ql1=unavailable'.")
+@click.option(
+    "--write-target",
+    metavar="FOLDER",
+    type=click.Path(file_okay=False, path_type=Path),
+    help="Also write the demo's target file here.",
+)
+@click.option(
+    "--trouble",
+    metavar="CATALOG=FAULT",
+    multiple=True,
+    help="Make an archive misbehave, such as 'nvss=html' or 'vlass-ql1=unavailable'.",
+)
 @click.option("--json", "as_json", is_flag=True, help="Print the whole answer as JSON.")
 @click.option("--quiet", is_flag=True, help="No progress on standard error.")
 @width_option
-def command(store: str | None, write_target: Path | None, trouble: tuple[str, ...], as_json: bool, quiet: bool, width: int | None) -> None:
+def command(
+    store: str | None,
+    write_target: Path | None,
+    trouble: tuple[str, ...],
+    as_json: bool,
+    quiet: bool,
+    width: int | None,
+) -> None:
     """Run the main job on an invented sky: an archive inside this program, a store of its own, no network.
 
     The array Tern, its transient Tern-4 and every object around it are made up.
@@ -33,7 +50,9 @@ def command(store: str | None, write_target: Path | None, trouble: tuple[str, ..
         for one in trouble:
             cause_trouble(archive, one)
         if store is None:
-            store = str(Path(stack.enter_context(tempfile.TemporaryDirectory(prefix="blankfield-demo-"))) / "demo.sqlite")
+            store = str(
+                Path(stack.enter_context(tempfile.TemporaryDirectory(prefix="blankfield-demo-"))) / "demo.sqlite"
+            )
         if write_target is not None:
             write_target.mkdir(parents=True, exist_ok=True)
             shutil.copy(fixture_path(TARGET_FILE), write_target)
@@ -42,7 +61,9 @@ def command(store: str | None, write_target: Path | None, trouble: tuple[str, ..
         assert answer is not None
         print_answer(answer, out, as_json)
     if not as_json:
-        click.echo("Everything above is invented: the array, the source and its sky. Your own target: blankfield target > mine.toml")
+        click.echo(
+            "Everything above is invented: the array, the source and its sky. Your own target: blankfield target > mine.toml"
+        )
 
 
 def cause_trouble(archive: object, one: str) -> None:

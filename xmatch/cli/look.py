@@ -42,10 +42,18 @@ def target_options(function: Any) -> Any:
 @store_option
 @click.option("--offline", is_flag=True, help="Never ask; answer from the store, whatever its age.")
 @click.option("--again", is_flag=True, help="Ask every archive again, also where the store has a fresh answer.")
-@click.option("--age", "age_limit_days", type=click.FloatRange(min=0.0), metavar="DAYS", help="Ask again what is older than this.")
+@click.option(
+    "--age", "age_limit_days", type=click.FloatRange(min=0.0), metavar="DAYS", help="Ask again what is older than this."
+)
 @click.option("--only", multiple=True, metavar="CATALOG", help="Ask this catalog only; may be given several times.")
 @catalog_folder_option
-@click.option("--contact", envvar="BLANKFIELD_CONTACT", show_envvar=True, metavar="EMAIL", help="Your address, sent to archives so that they can reach you.")
+@click.option(
+    "--contact",
+    envvar="BLANKFIELD_CONTACT",
+    show_envvar=True,
+    metavar="EMAIL",
+    help="Your address, sent to archives so that they can reach you.",
+)
 @click.option("--show-requests", is_flag=True, help="Print exactly what would be asked, and ask nothing.")
 @click.option("--json", "as_json", is_flag=True, help="Print the whole answer as JSON.")
 @click.option("--quiet", is_flag=True, help="No progress on standard error.")

@@ -58,9 +58,7 @@ def run_look(
 
             transport = Transport(contact=contact, addresses=archives)
         with progress_on(err, quiet) as progress:
-            return look(
-                target, store=opened, catalogs=chosen, transport=transport, options=options, progress=progress
-            )
+            return look(target, store=opened, catalogs=chosen, transport=transport, options=options, progress=progress)
 
 
 @contextmanager
@@ -81,7 +79,13 @@ def progress_on(stderr: Console, quiet: bool) -> Iterator[Progress | None]:
     from rich.progress import Progress as Bar
 
     waiting: list[str] = []
-    columns = (TextColumn("asking"), BarColumn(), MofNCompleteColumn(), TimeElapsedColumn(), TextColumn("{task.description}"))
+    columns = (
+        TextColumn("asking"),
+        BarColumn(),
+        MofNCompleteColumn(),
+        TimeElapsedColumn(),
+        TextColumn("{task.description}"),
+    )
     with Bar(*columns, console=stderr, transient=True) as bar:
         task = bar.add_task("", total=0)
 

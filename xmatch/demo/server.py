@@ -222,9 +222,7 @@ class _Handler(BaseHTTPRequestHandler):
     def faults(self, remote_tables: list[str]) -> list[Fault]:
         return [fault for name in remote_tables for fault in self.server.archive.faults_for(name)]
 
-    def send(
-        self, status: int, body: bytes, content_type: str, headers: dict[str, str], faults: list[Fault]
-    ) -> None:
+    def send(self, status: int, body: bytes, content_type: str, headers: dict[str, str], faults: list[Fault]) -> None:
         closing = self.server.archive.closing
         kinds = {fault.kind: fault for fault in faults}
         if "delay" in kinds and closing.wait(kinds["delay"].seconds):

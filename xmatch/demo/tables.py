@@ -129,9 +129,7 @@ def computed_columns(table: DemoTable, separation: Floats) -> dict[str, tuple[De
     }
 
 
-def table_xml(
-    name: str, description: str, columns: Sequence[DemoColumn], values: Sequence[NDArray[Any]]
-) -> list[str]:
+def table_xml(name: str, description: str, columns: Sequence[DemoColumn], values: Sequence[NDArray[Any]]) -> list[str]:
     """One TABLE element in lines; a table without rows keeps its fields and has no data."""
     lines = [f"<TABLE name={quoteattr(name)} ID={quoteattr(_identity(name))}>", _described(description)]
     for column in columns:

@@ -89,7 +89,9 @@ def cross_section_cm2(e_kev: ArrayLike) -> Floats:
     """
     e = np.asarray(e_kev, dtype=float)
     if np.any(~((e >= LOW_KEV * (1.0 - 1.0e-9)) & (e <= HIGH_KEV * (1.0 + 1.0e-9)))):
-        raise RangeError(f"energy {e_kev} keV is outside {LOW_KEV:g} to {HIGH_KEV:g} keV, the range of the cross-section")
+        raise RangeError(
+            f"energy {e_kev} keV is outside {LOW_KEV:g} to {HIGH_KEV:g} keV, the range of the cross-section"
+        )
     log_e, log_s = _table()
     sigma = np.exp(np.interp(np.log(e), log_e, log_s))
     return sigma + np.where(e > THOMSON_ABOVE_KEV, ELECTRONS_PER_H * THOMSON_CM2, 0.0)

@@ -68,9 +68,7 @@ def extinction_ratio(wavelength_um: ArrayLike, *, law: str = LAWS[0], r_v: float
     return np.where(um > HIGH_UM, 0.0, np.where(um < LOW_UM, np.nan, inside))
 
 
-def band_extinction_mag(
-    band: Band, av_mag: ArrayLike, *, law: str = LAWS[0], r_v: float = MEAN_R_V
-) -> Floats:
+def band_extinction_mag(band: Band, av_mag: ArrayLike, *, law: str = LAWS[0], r_v: float = MEAN_R_V) -> Floats:
     """Extinction of a band, magnitudes, averaged over its edges for a flat F_nu.
 
     Parameters

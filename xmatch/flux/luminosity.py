@@ -49,7 +49,12 @@ def absolute_magnitude(mag: ArrayLike, dist_pc: ArrayLike, extinction_mag: Array
 def exclusion_distance_pc(limit_mag: ArrayLike, absolute_mag: ArrayLike, extinction_mag: ArrayLike = 0.0) -> Floats:
     """Distance within which a star of this absolute magnitude would be brighter than the limit (definition)."""
     return 10.0 ** (
-        (np.asarray(limit_mag, dtype=float) - np.asarray(absolute_mag, dtype=float) - np.asarray(extinction_mag, dtype=float) + 5.0)
+        (
+            np.asarray(limit_mag, dtype=float)
+            - np.asarray(absolute_mag, dtype=float)
+            - np.asarray(extinction_mag, dtype=float)
+            + 5.0
+        )
         / 5.0
     )
 

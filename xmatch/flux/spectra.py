@@ -149,7 +149,9 @@ def blackbody_luminosity_erg_s(kt_kev: ArrayLike, radius_cm: ArrayLike) -> Float
 
 def radio_scaled(flux: ArrayLike, nu_from_hz: ArrayLike, nu_to_hz: ArrayLike, index: ArrayLike) -> Floats:
     """Flux density moved along S ~ nu^index (definition)."""
-    return np.asarray(flux, dtype=float) * (np.asarray(nu_to_hz, dtype=float) / nu_from_hz) ** np.asarray(index, dtype=float)
+    return np.asarray(flux, dtype=float) * (np.asarray(nu_to_hz, dtype=float) / nu_from_hz) ** np.asarray(
+        index, dtype=float
+    )
 
 
 def radio_band_flux_cgs(
@@ -158,8 +160,9 @@ def radio_band_flux_cgs(
     """Flux of S ~ nu^index between two frequencies, erg s^-1 cm^-2; exact at index -1 (definition)."""
     nu = np.asarray(nu_hz, dtype=float)
     a = np.asarray(index, dtype=float)
-    return np.asarray(flux_jy, dtype=float) * JY_CGS * nu * power_integral(
-        np.asarray(low_hz, dtype=float) / nu, np.asarray(high_hz, dtype=float) / nu, a + 1.0
+    return (
+        np.asarray(flux_jy, dtype=float)
+        * JY_CGS
+        * nu
+        * power_integral(np.asarray(low_hz, dtype=float) / nu, np.asarray(high_hz, dtype=float) / nu, a + 1.0)
     )
-
-

@@ -93,7 +93,9 @@ def limit_for_band(band: Band, photometry: Photometry | None, *, assumptions: As
         z_stated = float(z_one_sided(stated))
         value_at = float(restate(chosen.value, THRESHOLD_SIGMA + z_stated, THRESHOLD_SIGMA + z, band.quantity))
         total = THRESHOLD_SIGMA + z
-        note += f"; taken from {stated:.0%} to {assumptions.confidence:.0%} as for a {THRESHOLD_SIGMA:g} sigma threshold"
+        note += (
+            f"; taken from {stated:.0%} to {assumptions.confidence:.0%} as for a {THRESHOLD_SIGMA:g} sigma threshold"
+        )
     else:
         value_at, total = chosen.value, THRESHOLD_SIGMA + z
     if passed:
@@ -187,7 +189,9 @@ def _nominal(band: Band) -> _Depth | None:
     if band.depth is None:
         return None
     meaning = (
-        f"{band.depth_n_sigma:g} sigma" if band.depth_n_sigma is not None else f"{band.depth_completeness or 0:.0%} complete"
+        f"{band.depth_n_sigma:g} sigma"
+        if band.depth_n_sigma is not None
+        else f"{band.depth_completeness or 0:.0%} complete"
     )
     return _Depth(
         band.depth,

@@ -88,9 +88,7 @@ def raise_limit(
         return limit, False
     factor = float(hidden[worst] / own)
     value = float(-2.5 * np.log10(hidden[worst])) if magnitude else float(hidden[worst])
-    by = (
-        f"a neighbour of {neighbour_values[worst]:.4g} {limit.band.unit} at {separations_arcsec[worst]:.1f} arcsec"
-    )
+    by = f"a neighbour of {neighbour_values[worst]:.4g} {limit.band.unit} at {separations_arcsec[worst]:.1f} arcsec"
     flag = f"raised {factor:.3g} times by a neighbour"
     return (
         replace(

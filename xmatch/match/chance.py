@@ -11,7 +11,9 @@ from xmatch.constants import ARCSEC2_PER_DEG2
 from xmatch.records import Floats
 
 
-def expected_in_ellipse(density_per_deg2: ArrayLike, cxx: ArrayLike, cyy: ArrayLike, cxy: ArrayLike, k: ArrayLike) -> Floats:
+def expected_in_ellipse(
+    density_per_deg2: ArrayLike, cxx: ArrayLike, cyy: ArrayLike, cxy: ArrayLike, k: ArrayLike
+) -> Floats:
     """Unrelated rows expected inside the k-sigma ellipse of a covariance (arcsec^2): rho pi k^2 sqrt(det C)."""
     xx, yy, xy = (np.asarray(v, dtype=float) for v in (cxx, cyy, cxy))
     area = np.pi * np.square(np.asarray(k, dtype=float)) * np.sqrt(np.maximum(xx * yy - xy**2, 0.0))

@@ -78,7 +78,7 @@ def weigh(
     separation = separation_arcsec(position.ra_deg, position.dec_deg, ra, dec)
     txx, tyy, txy = covariance(position.sigma_major_arcsec, position.sigma_minor_arcsec, position.angle_deg)
     rxx, ryy, rxy = covariance(rows.sigma_major_arcsec, rows.sigma_minor_arcsec, rows.angle_deg)
-    extra = assumptions.frame_sigma_arcsec**2
+    extra: Floats = np.full(len(rows), assumptions.frame_sigma_arcsec**2)
     if assumptions.target_speed_km_s > 0.0 and distance_pc is not None:
         extra = extra + np.square(target_motion_sigma_arcsec(assumptions.target_speed_km_s, distance_pc, dt))
     population = assumptions.population_motion_mas_yr
@@ -90,8 +90,9 @@ def weigh(
     cxy = txy + rxy
     d = normalised(east, north, cxx, cyy, cxy)
     compatible = d <= k
-    typical = [float(np.median(v)) for v in (cxx, cyy, cxy)] if len(rows) else [float(txx), float(tyy), float(txy)]
-    inner = k * float(np.sqrt(max(typical[0], typical[1])))
+    own = (cxx, cyy, cxy) if len(rows) else (txx, tyy, txy)
+    xx, yy, xy = (float(np.median(v)) for v in own)
+    inner = k * float(np.sqrt(max(xx, yy)))
     density, error, n_ring = local_density(separation, inner, radius_arcsec)
     note = f"{density:.3g} +- {error:.2g} per square degree from {n_ring} rows in the ring"
     if n_ring < assumptions.density_min_rows:
@@ -113,7 +114,7 @@ def weigh(
         compatible=np.asarray(compatible, dtype=bool),
         density_per_deg2=density,
         density_note=note,
-        expected_chance=float(expected_in_ellipse(density, *typical, k)),
+        expected_chance=float(expected_in_ellipse(density, xx, yy, xy, k)),
         none_listed=none,
         dt_yr=float(np.median(dt)) if len(rows) else 0.0,
     )

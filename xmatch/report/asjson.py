@@ -28,7 +28,9 @@ def to_json(look: Look) -> dict[str, object]:
         "format_version": FORMAT_VERSION,
         "answer": answer(look),
         "standing": gone(look),
-        "failed": [f.catalog_id for f in look.findings if f.outcome in (Outcome.UNANSWERED, Outcome.MISREAD, Outcome.TRUNCATED)],
+        "failed": [
+            f.catalog_id for f in look.findings if f.outcome in (Outcome.UNANSWERED, Outcome.MISREAD, Outcome.TRUNCATED)
+        ],
         **body,
     }
 

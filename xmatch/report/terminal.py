@@ -86,14 +86,18 @@ def lines(look: Look, width: int) -> Iterator[tuple[str, str]]:
     yield from _assumptions(look, width)
 
 
-def _wrap(text: str, width: int, first: str = "", rest: str | None = None, style: str = "") -> Iterator[tuple[str, str]]:
+def _wrap(
+    text: str, width: int, first: str = "", rest: str | None = None, style: str = ""
+) -> Iterator[tuple[str, str]]:
     """Wrap one paragraph with a hanging indent; a word longer than the line is broken rather than run over."""
     rest = " " * len(first) if rest is None else rest
     if len(first) > 0.6 * width:  # a label too long to hang text from becomes part of the text
         indent = first[: len(first) - len(first.lstrip())]
         text, first = f"{first.strip()} {text}", indent
         rest = indent + "    " if len(rest) > 0.6 * width else rest
-    for line in textwrap.wrap(clean(text), width, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False) or [first]:
+    for line in textwrap.wrap(
+        clean(text), width, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False
+    ) or [first]:
         yield line, style
 
 
@@ -111,7 +115,11 @@ def _position(look: Look, width: int) -> Iterator[tuple[str, str]]:
         f"{number(p.sigma_major_arcsec)} x {number(p.sigma_minor_arcsec)} arcsec at {p.angle_deg:g} deg, 1 sigma per axis "
         f"(stated: {p.stated})", width, "error   ",
     )  # fmt: skip
-    asked = "offline: nothing was asked" if look.offline else f"{look.n_asked} asked now, {look.n_from_store} from the store"
+    asked = (
+        "offline: nothing was asked"
+        if look.offline
+        else f"{look.n_asked} asked now, {look.n_from_store} from the store"
+    )
     yield from _wrap(f"{look.made_at}, {asked}; {look.store}", width, "made    ")
     for remark in look.remarks:
         yield from _wrap(remark, width, "note    ")
@@ -125,7 +133,8 @@ def _finding(look: Look, finding: Finding, width: int) -> Iterator[tuple[str, st
     yield from _wrap(finding.why, width, " " * 6)
     for candidate in finding.candidates[:SHOWN_CANDIDATES]:
         listed = ", ".join(
-            f"{m.band.name} {'limit ' if m.is_limit else ''}{number(m.value, 4)} {m.band.unit}" for m in candidate.photometry
+            f"{m.band.name} {'limit ' if m.is_limit else ''}{number(m.value, 4)} {m.band.unit}"
+            for m in candidate.photometry
         )
         yield from _wrap(
             f"{candidate.key}: {candidate.separation_arcsec:.2f} arcsec ({candidate.normalised_separation:.2f} sigma), "
@@ -138,13 +147,17 @@ def _finding(look: Look, finding: Finding, width: int) -> Iterator[tuple[str, st
         unsure = "" if limit.verified_depth else "; unverified depth"
         flag = f"; {limit.flag}" if limit.flag else ""
         yield from _wrap(
-            f"{limit.band.name} {limit_text(limit)}{flag}{unsure}. {limit.method}: {limit.note}", width, "      limit ", " " * 12
+            f"{limit.band.name} {limit_text(limit)}{flag}{unsure}. {limit.method}: {limit.note}",
+            width,
+            "      limit ",
+            " " * 12,
         )
 
 
 def _chance(look: Look, width: int) -> Iterator[tuple[str, str]]:
     yield from _wrap(
-        f"Over all catalogs searched, {number(look.expected_chance)} unrelated rows are expected inside the error regions.", width
+        f"Over all catalogs searched, {number(look.expected_chance)} unrelated rows are expected inside the error regions.",
+        width,
     )
 
 
@@ -153,12 +166,20 @@ def _limits(look: Look, width: int) -> Iterator[tuple[str, str]]:
         return
     distances = look.limits[0].distance_pc
     yield from _section("The limits in physical terms", width)
-    where = f"Luminosity at {' / '.join(number(d / 1e3, 3) for d in distances)} kpc (near, median, far)" if distances else "No distance was given, so there is no luminosity"
+    where = (
+        f"Luminosity at {' / '.join(number(d / 1e3, 3) for d in distances)} kpc (near, median, far)"
+        if distances
+        else "No distance was given, so there is no luminosity"
+    )
     yield from _wrap(
-        f"Fluxes in erg/s/cm^2 (X-rays: in the band; others: nu F_nu), luminosities in erg/s, isotropic. {where}.", width
+        f"Fluxes in erg/s/cm^2 (X-rays: in the band; others: nu F_nu), luminosities in erg/s, isotropic. {where}.",
+        width,
     )
     if width >= WIDE:
-        yield f"  {'band':<26} {'limit':>22} {'observed <':>11} {'through':>8} {'corrected <':>12}  luminosity <", "underline"
+        yield (
+            f"  {'band':<26} {'limit':>22} {'observed <':>11} {'through':>8} {'corrected <':>12}  luminosity <",
+            "underline",
+        )
         for p in look.limits:
             yield _limit_row(p)[:width], ""
     else:
@@ -199,11 +220,14 @@ def _spin(look: Look, width: int) -> Iterator[tuple[str, str]]:
         return
     yield from _section("What the period says", width)
     less = "< " if spin.derivative_is_limit else ""
-    derivative = f"derivative {less}{number(spin.derivative)} s/s" if spin.derivative is not None else "no spin-down known"
+    derivative = (
+        f"derivative {less}{number(spin.derivative)} s/s" if spin.derivative is not None else "no spin-down known"
+    )
     more = "> " if spin.derivative_is_limit else ""
     years = f", characteristic age {more}{number(spin.age_yr)} yr" if spin.age_yr is not None else ""
     yield from _wrap(
-        f"period {spin.period_s:.8g} s, {derivative}{years}, light cylinder {number(spin.light_cylinder_cm / 1e5)} km. {spin.note}", width
+        f"period {spin.period_s:.8g} s, {derivative}{years}, light cylinder {number(spin.light_cylinder_cm / 1e5)} km. {spin.note}",
+        width,
     )
     if spin.conditional:
         yield from _wrap(spin.conditional, width, style="bold")
@@ -213,14 +237,20 @@ def _spin(look: Look, width: int) -> Iterator[tuple[str, str]]:
             f"equator, {less}{number(budget.field_pole_g)} G at the pole, {less}{number(budget.light_cylinder_field_g)} G at the light "
             f"cylinder (I = {number(budget.inertia_g_cm2)} g cm^2, R = {number(budget.radius_cm / 1e5)} km)", width, f"  {budget.star}: ", " " * 6,
         )  # fmt: skip
-    for says, text in (("above", "above"), ("below", "below"), ("nothing", "no statement (an upper limit above the line)")):
+    for says, text in (
+        ("above", "above"),
+        ("below", "below"),
+        ("nothing", "no statement (an upper limit above the line)"),
+    ):
         chosen = [line for line in spin.death_lines if line.says == says]
         if chosen:
             listed = "; ".join(f"{line.model} {line.distance_dex:+.1f} dex" for line in chosen)
             yield from _wrap(f"{listed}", width, f"  death lines, {text}: ", " " * 6)
     if spin.death_lines:
         sources = "; ".join(dict.fromkeys(line.source for line in spin.death_lines))
-        yield from _wrap(f"{sources}. They disagree by many orders of magnitude and rule nothing out alone.", width, "  ", " " * 6)
+        yield from _wrap(
+            f"{sources}. They disagree by many orders of magnitude and rule nothing out alone.", width, "  ", " " * 6
+        )
 
 
 def _standings(look: Look, width: int) -> Iterator[tuple[str, str]]:
@@ -237,11 +267,17 @@ def _standing(standing: Standing, draws: int, width: int) -> Iterator[tuple[str,
     kept = ""
     if standing.survival is not None:
         kept = f": {percent(standing.survival, draws)} survives ({percent(standing.survival_low, draws)} to {percent(standing.survival_high, draws)} over the variants)"
-    yield from _wrap(f"{standing.title}{kept}", width, f"  {str(standing.word).upper():<10} ", " " * 6, STYLE.get(standing.word, ""))
+    yield from _wrap(
+        f"{standing.title}{kept}", width, f"  {str(standing.word).upper():<10} ", " " * 6, STYLE.get(standing.word, "")
+    )
     if not standing.tests:
         yield from _wrap(standing.reason, width, " " * 6)
     for test in standing.tests:
-        left = " (informs only)" if test.informs_only else (f" ({percent(test.survival, draws)} survives)" if test.survival is not None else "")
+        left = (
+            " (informs only)"
+            if test.informs_only
+            else (f" ({percent(test.survival, draws)} survives)" if test.survival is not None else "")
+        )
         yield from _wrap(f"{test.test}{left}: {test.sentence} [{test.source}]", width, "      test ", " " * 11)
     if standing.variants:
         listed = ", ".join(f"{name} {percent(value, draws)}" for name, value in standing.variants.items())
@@ -265,5 +301,3 @@ def _assumptions(look: Look, width: int) -> Iterator[tuple[str, str]]:
         "The limit of an image is not the limit of a pulse; radio limits say beside them what they mean for a pulse.",
     ):
         yield from _wrap(caution, width, "  - ", "    ")
-
-

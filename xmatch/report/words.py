@@ -21,28 +21,42 @@ def answer(look: Look) -> str:
     if by[Outcome.COUNTERPART]:
         parts.append(f"a counterpart in {_names(by[Outcome.COUNTERPART])}")
     if by[Outcome.AMBIGUOUS]:
-        parts.append(f"{'a possible counterpart' if not parts else 'also a possible one'} in {_names(by[Outcome.AMBIGUOUS])}")
+        parts.append(
+            f"{'a possible counterpart' if not parts else 'also a possible one'} in {_names(by[Outcome.AMBIGUOUS])}"
+        )
     if not parts:
         whole = "nothing that can be called a counterpart"
         parts.append(f"{whole} in what did answer" if failed else whole)
     details: list[str] = []
     if by[Outcome.BLANK]:
-        details.append(f"{_count(len(by[Outcome.BLANK]), 'catalog is', 'catalogs are')} blank ({_wavebands(by[Outcome.BLANK])})")
+        details.append(
+            f"{_count(len(by[Outcome.BLANK]), 'catalog is', 'catalogs are')} blank ({_wavebands(by[Outcome.BLANK])})"
+        )
     if by[Outcome.CHANCE]:
-        details.append(f"{len(by[Outcome.CHANCE])} show{'s' if len(by[Outcome.CHANCE]) == 1 else ''} only what crowding explains ({_wavebands(by[Outcome.CHANCE])})")
+        details.append(
+            f"{len(by[Outcome.CHANCE])} show{'s' if len(by[Outcome.CHANCE]) == 1 else ''} only what crowding explains ({_wavebands(by[Outcome.CHANCE])})"
+        )
     if by[Outcome.HIDDEN]:
-        details.append(f"a neighbour hides the position in {len(by[Outcome.HIDDEN])} ({_wavebands(by[Outcome.HIDDEN])})")
+        details.append(
+            f"a neighbour hides the position in {len(by[Outcome.HIDDEN])} ({_wavebands(by[Outcome.HIDDEN])})"
+        )
     if by[Outcome.PARTLY_COVERED]:
-        details.append(f"{len(by[Outcome.PARTLY_COVERED])} cover only part of the error region ({_wavebands(by[Outcome.PARTLY_COVERED])})")
+        details.append(
+            f"{len(by[Outcome.PARTLY_COVERED])} cover only part of the error region ({_wavebands(by[Outcome.PARTLY_COVERED])})"
+        )
     if by[Outcome.NOT_COVERED]:
         details.append(f"{len(by[Outcome.NOT_COVERED])} never looked here ({_names(by[Outcome.NOT_COVERED])})")
     if by[Outcome.COVERAGE_UNKNOWN]:
-        details.append(f"{len(by[Outcome.COVERAGE_UNKNOWN])} cannot prove that it looked ({_names(by[Outcome.COVERAGE_UNKNOWN])})")
-    text = f"{look.target.name}: {' and '.join(parts)}. {'; '.join(details)}." if details else f"{look.target.name}: {' and '.join(parts)}."
-    if failed:
-        text += (
-            f" {len(failed)} of {n} gave no usable answer ({_names(failed)}): that is not a non-detection."
+        details.append(
+            f"{len(by[Outcome.COVERAGE_UNKNOWN])} cannot prove that it looked ({_names(by[Outcome.COVERAGE_UNKNOWN])})"
         )
+    text = (
+        f"{look.target.name}: {' and '.join(parts)}. {'; '.join(details)}."
+        if details
+        else f"{look.target.name}: {' and '.join(parts)}."
+    )
+    if failed:
+        text += f" {len(failed)} of {n} gave no usable answer ({_names(failed)}): that is not a non-detection."
     return clean(text)
 
 

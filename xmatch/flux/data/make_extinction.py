@@ -10,6 +10,7 @@ elsewhere), kept to show how far published laws disagree. Both evaluated by the 
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from dust_extinction.parameter_averages import CCM89, G23
@@ -38,7 +39,7 @@ def main() -> None:
     print(f"{path}: {ROWS} rows")
 
 
-def _um() -> object:
+def _um() -> Any:
     import astropy.units as u
 
     return u.micron
