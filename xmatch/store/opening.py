@@ -1,0 +1,306 @@
+"""Finding, checking and opening the file; and turning what SQLite says into errors a person can act on."""
+
+from __future__ import annotations
+
+import os
+import sqlite3
+import time
+from collections.abc import Iterator
+from contextlib import closing, contextmanager
+from pathlib import Path
+from urllib.parse import quote
+
+from sqlalchemy import URL, Connection, Engine, create_engine, event, make_url
+from sqlalchemy.exc import ArgumentError, DBAPIError
+
+from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
+from xmatch.resources import db_path
+from xmatch.store.schema import APPLICATION_ID, SCHEMA_VERSION, metadata, triggers
+
+ENVIRONMENT = "BLANKFIELD_STORE"
+OLDEST_SQLITE = (3, 37, 0)
+"""First SQLite with STRICT tables (sqlite.org/stricttables.html)."""
+WRITE = "blankfield_write"
+"""Execution option of connections that take the write lock when they begin, not when they first write."""
+NETWORK_FILE_SYSTEMS = frozenset(
+    (
+        "9p",
+        "afs",
+        "afpfs",
+        "beegfs",
+        "ceph",
+        "cifs",
+        "fuse.ceph",
+        "fuse.glusterfs",
+        "fuse.s3fs",
+        "fuse.sshfs",
+        "gfs2",
+        "glusterfs",
+        "gpfs",
+        "lustre",
+        "ncpfs",
+        "nfs",
+        "nfs4",
+        "orangefs",
+        "pvfs2",
+        "smb3",
+        "smbfs",
+    )
+)
+"""File systems whose locks and shared memory do not reach the other machines that use them."""
+MOUNTS = Path("/proc/mounts")
+_RETRY_S = 0.02
+
+
+def locate(where: str | Path | None = None) -> Path:
+    """Return the path of the store: the argument, else ``BLANKFIELD_STORE``, else one file in the data folder.
+
+    Parameters
+    ----------
+    where : str or Path, optional
+        A path, or a URL ``sqlite:///path``.
+
+    Raises
+    ------
+    ConfigurationError
+        For a URL of another kind: SQLite files are what there is so far.
+    """
+    if where is None or where == "":
+        where = os.environ.get(ENVIRONMENT) or None
+    if where is None:
+        import platformdirs
+
+        return Path(platformdirs.user_data_dir("blankfield", appauthor=False)) / "blankfield.sqlite"
+    if isinstance(where, str) and ("://" in where or where.startswith("sqlite:")):
+        where = _path_of(where)
+    if str(where) == ":memory:":
+        raise ConfigurationError("the store is ':memory:', which would be lost at once; give the path of a file")
+    return Path(where).expanduser().absolute()
+
+
+def _path_of(text: str) -> str:
+    try:
+        url = make_url(text)
+    except ArgumentError:
+        # the text is not repeated: it may hold a password
+        raise ConfigurationError("the store is a URL that cannot be read; write sqlite:///path or a path") from None
+    if url.get_backend_name() != "sqlite":
+        raise ConfigurationError(
+            f"the store is a {url.get_backend_name()} URL; only sqlite:///path or a path can be used so far"
+        )
+    if not url.database or url.query:
+        raise ConfigurationError(f"the store is {text!r}; write sqlite:///path, without options, or a path")
+    return url.database
+
+
+def connect(path: Path, *, read_only: bool, wait_s: float) -> tuple[Engine, list[str]]:
+    """Open the store, make it where there is none, and refuse what is not one.
+
+    Parameters
+    ----------
+    path : Path
+        The file.
+    read_only : bool
+        Never write, never make.
+    wait_s : float
+        How long to wait for another writer.
+
+    Returns
+    -------
+    engine : Engine
+        Connections with foreign keys on; those with the option ``WRITE`` hold the write lock from the start.
+    remarks : list of str
+        What the user should know of the place.
+
+    Raises
+    ------
+    StoreError, StoreVersionError, StoreBusyError
+        When it cannot be opened.
+    """
+    if sqlite3.sqlite_version_info < OLDEST_SQLITE:
+        oldest = ".".join(map(str, OLDEST_SQLITE))
+        raise StoreError(f"this Python holds SQLite {sqlite3.sqlite_version}; {oldest} is needed; use a newer Python")
+    _check_place(path, read_only)
+    remarks = []
+    network = network_file_system(path)
+    if network is not None:
+        remarks.append(
+            f"the store {path} lies on a network file system ({network}); use it from one machine at a time, "
+            "or move it to a local disk"
+        )
+    engine = _engine(path, read_only=read_only, wait_s=wait_s, durable=network is not None)
+    try:
+        with translated(path):
+            fresh = _is_fresh(engine, path)
+            if fresh and read_only:
+                raise StoreError(f"{path} is an empty file, not a store yet; run a look first, or give another --store")
+            if not read_only:
+                _set_journal(engine, "delete" if network is not None else "wal", wait_s)
+                if fresh:
+                    _make(engine, path)
+    except BaseException:
+        engine.dispose()
+        raise
+    return engine, remarks
+
+
+def _check_place(path: Path, read_only: bool) -> None:
+    if path.is_dir():
+        raise StoreError(f"{path} is a folder; give the path of a file in it")
+    if path.exists():
+        if not os.access(path, os.R_OK if read_only else os.R_OK | os.W_OK):
+            what = "read" if read_only else "written"
+            raise StoreError(f"{path} cannot be {what} by you; change its permissions or give another --store")
+        return
+    if read_only:
+        raise StoreError(f"there is no store at {path}; run a look first, or give another --store")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+    except OSError as fault:
+        raise StoreError(f"the folder of {path} cannot be made ({fault.strerror}); give another --store") from fault
+    if not os.access(path.parent, os.W_OK | os.X_OK):
+        raise StoreError(f"{path.parent} cannot be written by you; change its permissions or give another --store")
+
+
+def _engine(path: Path, *, read_only: bool, wait_s: float, durable: bool) -> Engine:
+    mode = "mode=ro" if read_only else "mode=rwc"
+    if read_only and not os.access(path.parent, os.W_OK) and not Path(f"{path}-wal").exists():
+        # a reader must be able to make the write-ahead files; where nobody can, nobody writes either
+        mode = "immutable=1"
+    uri = f"file:{quote(str(path))}?{mode}"
+
+    def opened() -> sqlite3.Connection:
+        # isolation_level None: SQLAlchemy's "begin" below says BEGIN, not the driver at its own time
+        connection = sqlite3.connect(uri, uri=True, timeout=wait_s, isolation_level=None, check_same_thread=False)
+        connection.execute("PRAGMA foreign_keys = ON")
+        # with a write-ahead log, NORMAL survives a crash of the program and keeps the file whole in a power cut
+        connection.execute(f"PRAGMA synchronous = {'FULL' if durable else 'NORMAL'}")
+        return connection
+
+    engine = create_engine(URL.create("sqlite", database=str(path)), creator=opened)
+
+    @event.listens_for(engine, "begin")
+    def begin(connection: Connection) -> None:
+        write = connection.get_execution_options().get(WRITE, False)
+        connection.exec_driver_sql("BEGIN IMMEDIATE" if write else "BEGIN")
+
+    return engine
+
+
+def _is_fresh(engine: Engine, path: Path) -> bool:
+    """Whether the file holds nothing yet. A file that is neither empty nor ours is refused."""
+    with engine.connect() as connection:
+        ours = connection.exec_driver_sql("PRAGMA application_id").scalar_one()
+        version = connection.exec_driver_sql("PRAGMA user_version").scalar_one()
+        things = connection.exec_driver_sql("SELECT count(*) FROM sqlite_master").scalar_one()
+    if ours != APPLICATION_ID:
+        if ours == 0 and version == 0 and things == 0:
+            return True
+        raise StoreError(f"{path} is an SQLite file but not a store of blankfield; left alone; give another path")
+    if version != SCHEMA_VERSION:
+        raise StoreVersionError(
+            f"{path} has schema version {version}, this blankfield reads and writes {SCHEMA_VERSION}; "
+            f"use the blankfield that made it, or give another --store; it was left alone"
+        )
+    return False
+
+
+def _set_journal(engine: Engine, mode: str, wait_s: float) -> None:
+    """Set the journal mode, which lasts in the file. SQLite may refuse at once while another process opens."""
+    deadline = time.monotonic() + wait_s
+    # the driver's own connection: the mode cannot be set inside a transaction
+    with closing(engine.raw_connection()) as pooled:
+        driver = pooled.driver_connection
+        assert isinstance(driver, sqlite3.Connection)
+        while True:
+            try:
+                if driver.execute("PRAGMA journal_mode").fetchone()[0] != mode:
+                    driver.execute(f"PRAGMA journal_mode = {mode}").fetchone()
+                return
+            except sqlite3.Error as fault:
+                if not _is_busy(fault) or time.monotonic() > deadline:
+                    raise
+                time.sleep(_RETRY_S)
+
+
+def _make(engine: Engine, path: Path) -> None:
+    """Make tables, triggers and views in one transaction, unless another process was faster."""
+    with engine.execution_options(**{WRITE: True}).begin() as connection:
+        if connection.exec_driver_sql("PRAGMA application_id").scalar_one() == APPLICATION_ID:
+            return
+        metadata.create_all(connection)
+        for statement in (*triggers(), *statements(db_path("views.sql").read_text(encoding="utf-8"))):
+            connection.exec_driver_sql(statement)
+        connection.exec_driver_sql(f"PRAGMA application_id = {APPLICATION_ID}")
+        connection.exec_driver_sql(f"PRAGMA user_version = {SCHEMA_VERSION}")
+
+
+def statements(script: str) -> list[str]:
+    """Split an SQL script into its statements."""
+    found, pending = [], ""
+    for line in script.splitlines(keepends=True):
+        pending += line
+        if sqlite3.complete_statement(pending):
+            found.append(pending.strip())
+            pending = ""
+    return found
+
+
+def network_file_system(path: Path, mounts: str | None = None) -> str | None:
+    """Return the type of the network file system that holds a path, None on a local one or when unknown.
+
+    Parameters
+    ----------
+    path : Path
+        The file; it need not exist.
+    mounts : str, optional
+        Mount table in the form of ``/proc/mounts``; by default that of this machine.
+    """
+    if mounts is None:
+        try:
+            mounts = MOUNTS.read_text(encoding="utf-8", errors="surrogateescape")
+        except OSError:
+            return None
+    place = path.resolve()
+    longest, kind = -1, ""
+    for line in mounts.splitlines():
+        fields = line.split(" ")
+        if len(fields) < 3:
+            continue
+        point = Path(fields[1].replace("\\040", " ").replace("\\011", "\t").replace("\\134", "\\"))
+        # of two mounts on one point the later one is what is seen
+        if place.is_relative_to(point) and len(point.parts) >= longest:
+            longest, kind = len(point.parts), fields[2]
+    return kind if kind in NETWORK_FILE_SYSTEMS else None
+
+
+@contextmanager
+def translated(path: Path) -> Iterator[None]:
+    """Turn what the driver says inside the block into a :class:`StoreError` that names the file."""
+    try:
+        yield
+    except DBAPIError as fault:
+        raise _as_store_error(fault.orig or fault, path) from fault
+    except sqlite3.Error as fault:
+        raise _as_store_error(fault, path) from fault
+
+
+def _is_busy(fault: BaseException | None) -> bool:
+    return str(getattr(fault, "sqlite_errorname", "")).startswith(("SQLITE_BUSY", "SQLITE_LOCKED"))
+
+
+def _as_store_error(fault: BaseException, path: Path) -> StoreError:
+    name = str(getattr(fault, "sqlite_errorname", ""))
+    if _is_busy(fault):
+        return StoreBusyError(f"{path} is locked by another writer; wait until it has finished, then repeat")
+    if name.startswith("SQLITE_FULL"):
+        return StoreError(f"no room left to write {path}; free some space, then repeat; what was stored is whole")
+    if name.startswith(("SQLITE_READONLY", "SQLITE_CANTOPEN", "SQLITE_PERM")):
+        return StoreError(f"{path} cannot be opened for this ({fault}); check its permissions and those of its folder")
+    if name.startswith("SQLITE_NOTADB"):
+        return StoreError(f"{path} is not an SQLite file; it was left alone; give another --store")
+    if name.startswith("SQLITE_CORRUPT"):
+        return StoreError(f"{path} is damaged ({fault}); restore it from a copy, or look again with another --store")
+    if name.startswith("SQLITE_CONSTRAINT"):
+        return StoreError(f"{path} refused what was to be stored ({fault}); nothing of it was kept; please report this")
+    return StoreError(f"{path}: {fault}; the tables are told in db/README.md")

@@ -1,0 +1,319 @@
+"""The store: one file that remembers what was asked, what was answered and what was concluded.
+
+>>> with open_store("mine.sqlite") as store:  # doctest: +SKIP
+...     store.frame("SELECT catalog_id, outcome FROM current_finding WHERE target_name = :name", {"name": "Tern-4"})
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from datetime import UTC, datetime
+from pathlib import Path
+from types import TracebackType
+from typing import TYPE_CHECKING, Any
+
+from sqlalchemy import Connection, Engine, func, select, update
+
+from xmatch.assumptions import Assumptions
+from xmatch.errors import StoreError
+from xmatch.records import Band, Look, ReplyStatus, Rows, Search, Target, Waveband
+from xmatch.store import concluding, reading, schema, writing
+from xmatch.store.border import bound, integer, json_text, text, utc_text
+from xmatch.store.opening import WRITE, connect, locate, translated
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from xmatch.records import Reply
+
+WAIT_S = 30.0
+"""How long another writer may keep us waiting (our choice; one search is written in well under a second)."""
+
+
+def open_store(where: str | Path | None = None, *, read_only: bool = False, wait_s: float = WAIT_S) -> Store:
+    """Open a store; make it, and its folder, where there is none.
+
+    Parameters
+    ----------
+    where : str or Path, optional
+        A path or ``sqlite:///path``. By default the environment variable ``BLANKFIELD_STORE``, else
+        ``blankfield.sqlite`` in the user's data folder.
+    read_only : bool
+        Never write and never make.
+    wait_s : float
+        How long to wait for another writer, in seconds.
+
+    Raises
+    ------
+    ConfigurationError
+        A URL that is not ``sqlite:///path``.
+    StoreVersionError
+        A store of another schema version; it is left alone.
+    StoreBusyError
+        Another process kept it locked.
+    StoreError
+        Not a store, not readable, not writable, or not there and ``read_only``.
+    """
+    path = locate(where)
+    engine, remarks = connect(path, read_only=read_only, wait_s=wait_s)
+    return Store(engine, path, remarks, read_only=read_only)
+
+
+class Store:
+    """An open store. Use :func:`open_store`, best in a ``with`` statement; one thread writes.
+
+    Every method that writes commits whole or not at all, and raises :class:`~xmatch.errors.StoreError` (locked:
+    :class:`~xmatch.errors.StoreBusyError`) with nothing changed.
+
+    Attributes
+    ----------
+    path : Path
+        The file.
+    """
+
+    def __init__(self, engine: Engine, path: Path, remarks: Sequence[str] = (), *, read_only: bool = False) -> None:
+        self.path = path
+        self.read_only = read_only
+        self._engine: Engine | None = engine
+        self._remarks = list(remarks)
+        # which state of each catalog file this process works with
+        self._catalog_keys: dict[tuple[str, str], int] = {}
+
+    def __enter__(self) -> Store:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, fault: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Close every connection; a second time does nothing."""
+        if self._engine is not None:
+            self._engine.dispose()
+            self._engine = None
+
+    @property
+    def name(self) -> str:
+        """The path as text, for people."""
+        return str(self.path)
+
+    @property
+    def url(self) -> str:
+        """The store as a SQLAlchemy URL."""
+        return f"sqlite:///{self.path}"
+
+    @property
+    def remarks(self) -> tuple[str, ...]:
+        """What the user should know of this store: where it lies, what in it could not be used."""
+        return tuple(self._remarks)
+
+    # --- writing -----------------------------------------------------------------------------------
+    def put_target(self, target: Target) -> int:
+        """Return the key of a target. The same content has the same key; any change is a new version."""
+        with self._writing() as connection:
+            return writing.put_target(connection, target, _now())
+
+    def put_catalog(
+        self,
+        catalog_id: str,
+        release: str,
+        title: str,
+        waveband: Waveband,
+        fingerprint: str,
+        bands: Sequence[Band],
+    ) -> int:
+        """Return the key of one state of a catalog file; later searches of that release refer to it.
+
+        Parameters
+        ----------
+        catalog_id, release, title, waveband
+            As in the catalog file.
+        fingerprint : str
+            SHA-256 of the file's bytes.
+        bands : sequence of Band
+            Its bands; the rows of a search may hold no others.
+        """
+        with self._writing() as connection:
+            key = writing.put_catalog(connection, catalog_id, release, title, waveband, fingerprint, bands, _now())
+        self._catalog_keys[catalog_id, release] = key
+        return key
+
+    def begin_run(self, target_id: int, version: str, options: Mapping[str, object] | None = None) -> int:
+        """Note that a look at a target begins; return its key."""
+        with self._writing() as connection:
+            return writing.insert_one(
+                connection,
+                schema.run,
+                target_id=integer(target_id, "target_id"),
+                version=text(version),
+                options=json_text(options or {}),
+                started_at=_now(),
+            )
+
+    def finish_run(self, run_id: int) -> None:
+        """Note that a look ended."""
+        run = schema.run
+        with self._writing() as connection:
+            done = connection.execute(
+                update(run).where(run.c.run_id == integer(run_id, "run_id")).values(finished_at=_now())
+            )
+            if done.rowcount != 1:
+                raise StoreError(f"the store knows no run {run_id}; begin_run comes first")
+
+    def put_search(self, run_id: int, target_id: int, reply: Reply, rows: Rows | None) -> Search:
+        """Keep one question, its judged reply and its rows: all of it or nothing.
+
+        Parameters
+        ----------
+        run_id, target_id : int
+            From :meth:`begin_run` and :meth:`put_target`.
+        reply : Reply
+            The reply. A whole one needs its rows, even when there are none.
+        rows : Rows or None
+            The rows as the door let them in; None for a reply that must not be read.
+
+        Raises
+        ------
+        RangeError
+            A row without a position, arrays of unequal length.
+        """
+        place = (reply.question.catalog_id, reply.question.release)
+        with self._writing() as connection:
+            key = self._catalog_keys.get(place) or writing.catalog_key_of(connection, *place)
+            return writing.put_search(connection, run_id, target_id, key, reply, rows)
+
+    def put_assumptions(self, assumptions: Assumptions) -> str:
+        """Keep a set of assumptions; return its content hash."""
+        with self._writing() as connection:
+            writing.put_assumptions(connection, assumptions.digest, assumptions.as_dict())
+        return assumptions.digest
+
+    def put_answer(self, run_id: int, target_id: int, look: Look) -> None:
+        """Keep what one look concluded: all of it or nothing, once per run.
+
+        Raises
+        ------
+        RangeError
+            A number that is infinite, or missing where there must be one.
+        """
+        with self._writing() as connection:
+            concluding.put_answer(connection, run_id, target_id, look, _now())
+
+    # --- reading -----------------------------------------------------------------------------------
+    def find_target(self, target: Target) -> int | None:
+        """Return the key of the latest target at the same position, None where there is none. Nothing is written.
+
+        Its searches are those of this target: what is known of an object does not change the sky.
+        """
+        with self._reading() as connection:
+            return reading.find_target(connection, target)
+
+    def current_searches(self, target_id: int) -> list[Search]:
+        """Return the latest whole searches at the position of a target, oldest first.
+
+        One for each catalog, release, table, centre and radius; versions of the target at the same position
+        share them. The caller compares centre, radius and age with what it needs.
+        """
+        with self._reading() as connection:
+            return reading.current_searches(connection, target_id)
+
+    def last_attempts(self, target_id: int) -> list[Search]:
+        """Return the latest search of any status for each catalog, release and table, oldest first."""
+        with self._reading() as connection:
+            return reading.last_attempts(connection, target_id)
+
+    def rows_of(self, search_ids: Sequence[int], bands: Sequence[Band], *, raw: bool = False) -> Rows:
+        """Return the rows of some searches of one catalog, in the order of the searches and the replies.
+
+        Parameters
+        ----------
+        search_ids : sequence of int
+            Which searches.
+        bands : sequence of Band
+            Which bands; each gets arrays of full length, ``nan`` where the catalog gives nothing. Values that were
+            stored in another unit or magnitude system are not handed out; :attr:`remarks` says so.
+        raw : bool
+            Also return the rows as served.
+
+        Raises
+        ------
+        StoreError
+            A search is unknown, or does not have exactly the rows it should have.
+        """
+        with self._reading() as connection:
+            rows, remarks = reading.rows_of(connection, search_ids, bands, raw=raw)
+        self._remarks.extend(remark for remark in remarks if remark not in self._remarks)
+        return rows
+
+    def frame(self, sql: str, params: Mapping[str, object] | Sequence[object] | None = None) -> pd.DataFrame:
+        """Return the answer to a SELECT as a pandas table, for work of one's own. Nothing can be changed by it.
+
+        Parameters
+        ----------
+        sql : str
+            One statement, with ``:name`` or ``?`` for parameters. Tables and views are told in ``db/README.md``.
+        params : mapping or sequence, optional
+            Values of the parameters.
+
+        Returns
+        -------
+        pandas.DataFrame
+            Whole numbers as nullable 64-bit integers, never through floats; text as strings; NULL as missing.
+        """
+        values: Any = ()
+        if isinstance(params, Mapping):
+            values = {name: bound(value) for name, value in params.items()}
+        elif params is not None:
+            values = tuple(bound(value) for value in params)
+        with self._reading() as connection:
+            connection.exec_driver_sql("PRAGMA query_only = ON")
+            try:
+                return reading.frame(connection, sql, values)
+            finally:
+                connection.exec_driver_sql("PRAGMA query_only = OFF")
+
+    def status(self) -> dict[str, object]:
+        """Return where the store is and how much it holds."""
+        counted = (schema.target, schema.run, schema.search, schema.row, schema.finding, schema.flux_limit)
+        search = schema.search
+        with self._reading() as connection:
+            counts = [connection.execute(select(func.count()).select_from(table)).scalar_one() for table in counted]
+            whole = select(func.count()).where(search.c.status == ReplyStatus.WHOLE.value)
+            return {
+                "store": self.name,
+                "schema_version": schema.SCHEMA_VERSION,
+                "size_bytes": self.path.stat().st_size,
+                "targets": counts[0],
+                "runs": counts[1],
+                "searches": counts[2],
+                "whole_searches": connection.execute(whole).scalar_one(),
+                "rows": counts[3],
+                "findings": counts[4],
+                "limits": counts[5],
+                "last_asked_at": connection.execute(select(func.max(search.c.asked_at))).scalar_one(),
+            }
+
+    # --- connections -------------------------------------------------------------------------------
+    @contextmanager
+    def _writing(self) -> Iterator[Connection]:
+        if self.read_only:
+            raise StoreError(f"{self.path} was opened read-only; open it without read_only to write")
+        engine = self._open_engine().execution_options(**{WRITE: True})
+        with translated(self.path), engine.begin() as connection:
+            yield connection
+
+    @contextmanager
+    def _reading(self) -> Iterator[Connection]:
+        with translated(self.path), self._open_engine().connect() as connection:
+            yield connection
+
+    def _open_engine(self) -> Engine:
+        if self._engine is None:
+            raise StoreError(f"{self.path} was closed; open it again")
+        return self._engine
+
+
+def _now() -> str:
+    return utc_text(datetime.now(UTC).replace(microsecond=0))
