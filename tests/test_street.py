@@ -11,6 +11,7 @@ from typing import Any
 import pytest
 
 from xmatch.archives.transport import Transport
+from xmatch.assumptions import Assumptions
 from xmatch.catalogs import load_catalogs
 from xmatch.demo.faults import Fault
 from xmatch.demo.scene import demo_target
@@ -34,6 +35,7 @@ def store(tmp_path: Path) -> Iterator[Store]:
 
 def ask(store: Store, archive: Any, **how: Any) -> Look:
     now = how.pop("now", None)
+    how.setdefault("assumptions", Assumptions(draws=5000))  # enough here; the engine's own tests use its default
     clock = {} if now is None else {"now": lambda: now}
     return look(
         demo_target(),

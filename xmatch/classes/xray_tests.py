@@ -13,7 +13,7 @@ from xmatch.classes.model import Prediction
 from xmatch.classes.rotation_tests import NO_DISTANCE, NO_SPIN, isotropic_log10, say_power
 from xmatch.classes.survival import miss_probability
 from xmatch.constants import KEV_HZ
-from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_fraction
+from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_fraction, transmitted_fractions
 from xmatch.flux.luminosity import sphere_cm2
 from xmatch.flux.spectra import Blackbody, PowerLaw
 from xmatch.records import Band, Floats, PhysicalLimit
@@ -74,10 +74,8 @@ def blackbody_fraction(kt_kev: Floats, column_cm2: Floats, band_kev: tuple[float
     columns = column_nodes(column_cm2)
     # in units of kT every blackbody is the same: one call integrates all temperatures
     emitted = Blackbody(1.0).band_integral(band_kev[0] / temperatures, band_kev[1] / temperatures) / BOLOMETRIC
-    grid = np.empty((TEMPERATURE_NODES, COLUMN_NODES))
-    for row, kt in enumerate(temperatures):
-        through = transmitted_fraction(Blackbody(float(kt)), *band_kev, columns)
-        grid[row] = np.log(np.maximum(emitted[row] * through, TINY))
+    through = transmitted_fractions([Blackbody(float(kt)) for kt in temperatures], *band_kev, columns)
+    grid = np.log(np.maximum(emitted[:, None] * through, TINY))
     x, i = _place(np.log(kt_kev), np.log(temperatures))
     y, j = _place(np.log(np.maximum(column_cm2, columns[0])), np.log(columns))
     below = grid[i, j] * (1 - y) + grid[i, j + 1] * y

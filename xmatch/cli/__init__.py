@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import importlib
 import os
 import sys
@@ -15,6 +16,7 @@ from xmatch.errors import BlankfieldError, StoreError
 EXIT_FAULT = 70
 """Exit code of a fault nobody foresaw (EX_SOFTWARE of sysexits.h)."""
 EXIT_INTERRUPTED = 130
+GC_OBJECTS = 200_000
 COMMANDS = {
     "look": ("xmatch.cli.look", "What every archive holds at one position, and what that rules out."),
     "demo": ("xmatch.cli.demo", "The main job on an invented sky: embedded archive, own store, no network."),
@@ -60,6 +62,8 @@ def group() -> None:
 
 def main(args: Sequence[str] | None = None) -> None:
     """Run the command line; every foreseen error becomes one line and its exit code."""
+    # a short-lived process that imports some hundred modules spends a tenth of a warm answer looking for garbage
+    gc.set_threshold(GC_OBJECTS)
     try:
         group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
     except click.exceptions.Exit as stop:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import TYPE_CHECKING
 
 from xmatch.resources import fixture_path
@@ -9,6 +10,7 @@ from xmatch.target import read_target
 
 if TYPE_CHECKING:
     from xmatch.demo.server import EmbeddedArchive
+    from xmatch.demo.tables import DemoTable
     from xmatch.records import Target
 
 TARGET_FILE = "demo/tern-4.toml"
@@ -22,6 +24,13 @@ def demo_target() -> Target:
 
 def demo_archive() -> EmbeddedArchive:
     """An embedded archive, not yet started, that serves every table of the invented sky."""
-    from xmatch.demo.server import EmbeddedArchive, load_table
+    from xmatch.demo.server import EmbeddedArchive
 
-    return EmbeddedArchive([load_table(path) for path in sorted(fixture_path(SKY_FOLDER).glob("*.ecsv"))])
+    return EmbeddedArchive(_tables())
+
+
+@lru_cache(maxsize=1)
+def _tables() -> tuple[DemoTable, ...]:
+    from xmatch.demo.tables import load_table
+
+    return tuple(load_table(path) for path in sorted(fixture_path(SKY_FOLDER).glob("*.ecsv")))

@@ -6,6 +6,7 @@ The polynomial of Morrison & McCammon (1983) is the self-contained check.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from functools import lru_cache
 from importlib import resources
 
@@ -139,12 +140,22 @@ def transmitted_fraction(spectrum: Spectrum, low_kev: float, high_kev: float, co
     exp(-N_H sigma(E)) averaged over E N(E) (Wilms, Allen & McCray 2000). Every cell of the cross-section table has its own
     Gauss-Legendre nodes, so that the integral of the tabulated curve is exact to rounding.
     """
+    return transmitted_fractions([spectrum], low_kev, high_kev, column_cm2)[0]
+
+
+def transmitted_fractions(
+    spectra: Sequence[Spectrum], low_kev: float, high_kev: float, column_cm2: ArrayLike
+) -> Floats:
+    """The same for several spectra behind the same columns; shape (spectra, columns...).
+
+    The attenuation is computed once for all of them, which is what the class tests need.
+    """
     column = np.asarray(column_cm2, dtype=float)
     if np.any(~(column >= 0.0)):
         raise RangeError(f"column {column_cm2} cm^-2 is not allowed; it must be 0 or more")
     if not 0.0 < low_kev < high_kev:
         raise RangeError(f"band {low_kev} to {high_kev} keV is not allowed; 0 < low < high is needed")
     e, w, sigma = _nodes(float(low_kev), float(high_kev))
-    weight = w * spectrum.energy_flux(e)
+    weight = np.array([w * spectrum.energy_flux(e) for spectrum in spectra])
     through = np.exp(-np.multiply.outer(column, sigma))
-    return through @ weight / weight.sum()
+    return np.moveaxis(through @ (weight / weight.sum(axis=1, keepdims=True)).T, -1, 0)
