@@ -7,7 +7,7 @@ import math
 import numpy as np
 
 from xmatch.assumptions import Assumptions
-from xmatch.constants import C_CM_S, KEV_HZ
+from xmatch.constants import KEV_HZ
 from xmatch.flux.absorption import transmitted_fraction
 from xmatch.flux.column import DEFAULT_RELATION, column_from_dm_cm2, column_per_av_cm2
 from xmatch.flux.extinction import band_extinction_mag
@@ -101,14 +101,14 @@ def band_transmission(band: Band, assumptions: Assumptions) -> tuple[float, str]
             )
         return through, note
     if band.waveband is Waveband.RADIO or band.waveband is Waveband.OBJECT_LIST:
-        return 1.0, f"nu F_nu at {band.nu_hz / 1.0e9:.4g} GHz, nothing absorbed"
+        return 1.0, "nu F_nu at the quoted frequency, nothing absorbed"
     av = assumptions.av_mag or 0.0
     magnitudes = float(band_extinction_mag(band, av, law=assumptions.extinction_law, r_v=assumptions.r_v))
     if not math.isfinite(magnitudes):
         return math.nan, "no extinction curve reaches this band: not corrected"
     note = (
-        f"nu F_nu at {C_CM_S / band.nu_hz * 1.0e4:.3g} um, A_V {av:.2f} ({assumptions.av_origin}), {assumptions.extinction_law}, "
-        f"R_V {assumptions.r_v:g}: {magnitudes:.2f} mag in the band"
+        f"nu F_nu at the pivot; A_V {av:.2f} ({assumptions.av_origin}), {assumptions.extinction_law}, "
+        f"R_V {assumptions.r_v:g}, averaged over the band for a flat F_nu"
     )
     return 10.0 ** (-0.4 * magnitudes), note
 

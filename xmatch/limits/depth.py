@@ -154,7 +154,7 @@ def _from_faint_end(band: Band, value: Floats, error: Floats, passed: list[str])
             depth,
             None,
             LimitMethod.LOCAL_FAINT_END,
-            f"counts of {n} neighbours turn over at {depth:.2f} mag, where completeness begins to fall",
+            f"counts of {n} neighbours turn over at {depth:.2f} mag, where completeness begins to fall: taken as the completeness limit",
         )
     faintest = float(value.min())
     spread = float(np.log(value / faintest).sum())

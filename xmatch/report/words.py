@@ -6,7 +6,7 @@ import math
 import unicodedata
 from collections.abc import Iterable, Sequence
 
-from xmatch.records import Finding, LimitKind, Look, Outcome, Quantity, StandingWord
+from xmatch.records import Finding, LimitKind, Look, Outcome, Quantity, StandingWord, Waveband
 from xmatch.records import Limit as LimitRecord
 
 FAILED = (Outcome.UNANSWERED, Outcome.MISREAD, Outcome.TRUNCATED)
@@ -46,6 +46,10 @@ def answer(look: Look) -> str:
         )
     if by[Outcome.NOT_COVERED]:
         details.append(f"{len(by[Outcome.NOT_COVERED])} never looked here ({_names(by[Outcome.NOT_COVERED])})")
+    lists = [f for f in by[Outcome.COVERAGE_UNKNOWN] if f.waveband is Waveband.OBJECT_LIST]
+    by[Outcome.COVERAGE_UNKNOWN] = [f for f in by[Outcome.COVERAGE_UNKNOWN] if f not in lists]
+    if lists:
+        details.append(f"no known object at the position ({_names(lists)}, which proves nothing)")
     if by[Outcome.COVERAGE_UNKNOWN]:
         details.append(
             f"{len(by[Outcome.COVERAGE_UNKNOWN])} cannot prove that it looked ({_names(by[Outcome.COVERAGE_UNKNOWN])})"
@@ -134,7 +138,7 @@ def percent(value: float | None, draws: int) -> str:
     if value is None:
         return "-"
     floor = 3.0 / draws
-    if value < floor:
+    if value <= floor * (1.0 + 1.0e-9):
         return f"< {floor:.0e}".replace("e-0", "e-")
     return f"{value:.2g}" if value < 0.1 else f"{value:.2f}"
 
