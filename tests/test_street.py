@@ -74,6 +74,16 @@ def test_a_second_look_answers_from_the_store_without_the_network(store: Store, 
     assert second.standings == first.standings
 
 
+def test_an_answer_that_did_not_change_is_kept_once(store: Store, archive: Any) -> None:
+    first = ask(store, archive)
+    before = store.status()
+    second = ask(store, archive)
+    assert second.run_id == first.run_id
+    assert store.status() == before
+    other = ask(store, archive, assumptions=Assumptions(draws=5000, photon_index=1.7))
+    assert other.run_id != first.run_id and other.digest != first.digest
+
+
 def test_an_old_answer_is_asked_again_and_again_forces_it(store: Store, archive: Any) -> None:
     ask(store, archive)
     later = datetime.now(UTC) + timedelta(days=20)

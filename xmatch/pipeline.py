@@ -28,6 +28,8 @@ if TYPE_CHECKING:
     from xmatch.archives.transport import Transport
     from xmatch.store.store import Store
 
+NO_RUN = 0
+"""Stands for the run of a look that asked nothing, until its answer turns out to be new."""
 Progress = Callable[[str, str], None]
 """Called with the catalog's id and one of ``asking``, ``whole``, ``truncated``, ``unanswered``, ``misread``."""
 
@@ -89,8 +91,10 @@ def look(
         again=options.again,
         age_limit_days=options.age_limit_days,
     )
-    run_id = store.begin_run(target_id, __version__, {"offline": options.offline, "again": options.again})
-    asked = _ask([step for step in plan if step.ask], run_id, target_id, store, transport, progress)
+    how = {"offline": options.offline, "again": options.again}
+    due = [step for step in plan if step.ask]
+    run_id = store.begin_run(target_id, __version__, how) if due else NO_RUN
+    asked = _ask(due, run_id, target_id, store, transport, progress)
     evidence = _gather(plan, asked, catalogs, store, now())
     answer = conclude(
         target,
@@ -103,6 +107,13 @@ def look(
         store_name=store.name,
         remarks=store.remarks,
     )
+    if run_id == NO_RUN:
+        # nothing was asked: an answer that is already the latest is not kept twice
+        known = store.same_answer(target_id, answer)
+        if known is not None:
+            return replace(answer, run_id=known)
+        run_id = store.begin_run(target_id, __version__, how)
+        answer = replace(answer, run_id=run_id)
     store.put_answer(run_id, target_id, answer)
     store.finish_run(run_id)
     return answer

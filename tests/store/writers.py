@@ -1,7 +1,7 @@
 """Processes that write, for the tests that kill them or let two of them write at once.
 
-``writers.py nursery``: reads ``path seconds`` lines; for each one starts a writer on that store, kills it after so
-many seconds with SIGKILL, and prints the keys of the searches that the writer had been told are stored.
+``writers.py nursery``: reads ``path seconds from_first`` lines; for each one starts a writer on that store, kills it
+with SIGKILL so many seconds after its start or after its first search, and prints the keys of the searches that the writer had been told are stored.
 ``writers.py write path tag n``: stores n searches under its own target and prints their keys.
 ``writers.py race folder files n``: n processes at once make each of so many stores; prints what went wrong.
 """
@@ -22,6 +22,7 @@ from xmatch.records import ReplyStatus, Search
 from xmatch.store.store import open_store
 from xmatch.store.writing import healpix
 
+WAIT_S = 60.0
 SIZES = (0, 3, 40, 400, 1)
 
 
@@ -54,11 +55,13 @@ def nursery() -> None:
     fork = multiprocessing.get_context("fork")
     say("ready")
     for line in sys.stdin:
-        path, seconds = json.loads(line)
+        path, seconds, from_first = json.loads(line)
         here, there = fork.Pipe(duplex=False)
         writer = fork.Process(target=tell, args=(path, there))
         writer.start()
         there.close()
+        if from_first:
+            here.poll(WAIT_S)  # on a busy machine the first search may take its time
         writer.join(seconds)
         writer.kill()
         writer.join()

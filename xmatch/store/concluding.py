@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import hashlib
 import math
 from collections import defaultdict
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import Any
 
 from sqlalchemy import Connection, select, update
@@ -18,6 +20,28 @@ from xmatch.store.writing import insert_many, insert_one, put_assumptions, put_b
 PLACES = ("low", "median", "high")
 """What the three luminosities of a limit stand for; any other number of them is a grid."""
 _CANDIDATE_NUMBERS = ("ra_deg", "dec_deg", "separation_arcsec", "normalised_separation", "tail", "chance", "odds")
+
+
+def answer_digest(look: Look) -> str:
+    """Content hash of what a look concluded: its findings without ages, limits, spin figures, standings and assumptions."""
+    findings = [
+        replace(one, age_s=None, searches=tuple(replace(search, from_store=False) for search in one.searches))
+        for one in look.findings
+    ]
+    content = [look.version, look.digest, findings, look.limits, look.spin, look.standings, look.expected_chance]
+    return hashlib.sha256(json_text(content).encode()).hexdigest()[:32]
+
+
+def same_answer(connection: Connection, target_id: int, look: Look) -> int | None:
+    """Return the run whose answer is the target's latest and equal to this one, None when there is none."""
+    run = schema.run
+    last = connection.execute(
+        select(run.c.run_id, run.c.answer_digest)
+        .where(run.c.target_id == target_id, run.c.answered_at.is_not(None))
+        .order_by(run.c.run_id.desc())
+        .limit(1)
+    ).one_or_none()
+    return None if last is None or last.answer_digest != answer_digest(look) else int(last.run_id)
 
 
 def put_answer(connection: Connection, run_id: int, target_id: int, look: Look, now: str) -> None:
@@ -47,6 +71,7 @@ def put_answer(connection: Connection, run_id: int, target_id: int, look: Look, 
             expected_chance=required(look.expected_chance, "expected chance alignments"),
             spin=None if look.spin is None else json_text(look.spin),
             remarks=json_text(look.remarks),
+            answer_digest=answer_digest(look),
         )
     )
     physical: defaultdict[Limit, list[PhysicalLimit]] = defaultdict(list)

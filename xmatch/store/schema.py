@@ -189,6 +189,7 @@ run = _table(
     _real("expected_chance", "Unrelated rows expected in the error regions of all catalogs.", unit="count", null=True),
     _text("spin", "Spin figures.", unit="JSON", null=True),
     _text("remarks", "Remarks to the reader.", unit="JSON", null=True),
+    _text("answer_digest", "Content hash of the conclusions; equal hashes, equal conclusions.", null=True),
 )
 
 search = _table(

@@ -202,6 +202,11 @@ class Store:
             concluding.put_answer(connection, run_id, target_id, look, _now())
 
     # --- reading -----------------------------------------------------------------------------------
+    def same_answer(self, target_id: int, look: Look) -> int | None:
+        """Return the run that already holds this answer as the target's latest, None where there is none."""
+        with self._reading() as connection:
+            return concluding.same_answer(connection, target_id, look)
+
     def find_target(self, target: Target) -> int | None:
         """Return the key of the latest target at the same position, None where there is none. Nothing is written.
 
