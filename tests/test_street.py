@@ -84,6 +84,25 @@ def test_an_answer_that_did_not_change_is_kept_once(store: Store, archive: Any) 
     assert other.run_id != first.run_id and other.digest != first.digest
 
 
+def test_a_look_at_some_catalogs_keeps_its_searches_and_not_its_answer(store: Store, archive: Any) -> None:
+    some = {name: catalog for name, catalog in load_catalogs().items() if name in ("nvss", "gaia-dr3")}
+    answer = look(
+        demo_target(), store=store, catalogs=some, transport=Transport(addresses=archive.address),
+        options=LookOptions(partial=True, assumptions=Assumptions(draws=5000)),
+    )  # fmt: skip
+    assert outcomes(answer) == {name: BUILT_TO_SHOW[name] for name in some}
+    assert any("only some catalogs" in remark for remark in answer.remarks)
+    assert store.status()["searches"] == 2 and store.status()["findings"] == 0
+    assert ask(store, archive).n_from_store == 2
+
+
+def test_candidates_carry_their_flux(store: Store, archive: Any) -> None:
+    gaia = next(f for f in ask(store, archive).findings if f.catalog_id == "gaia-dr3")
+    g = gaia.candidates[0].photometry[0]
+    # Vega zero point 3228.75 Jy at 0.5822 um: nu F_nu = 10^(-0.4 x 19.7) x 3228.75e-23 x c / 0.5822 um
+    assert g.flux_cgs == pytest.approx(10 ** (-0.4 * 19.7) * 3228.75e-23 * 2.99792458e10 / 0.5822e-4, rel=1e-9)
+
+
 def test_an_old_answer_is_asked_again_and_again_forces_it(store: Store, archive: Any) -> None:
     ask(store, archive)
     later = datetime.now(UTC) + timedelta(days=20)

@@ -30,6 +30,7 @@ if TYPE_CHECKING:
 
 NO_RUN = 0
 """Stands for the run of a look that asked nothing, until its answer turns out to be new."""
+PARTIAL = "only some catalogs were looked at: their searches are kept, this answer is not"
 Progress = Callable[[str, str], None]
 """Called with the catalog's id and one of ``asking``, ``whole``, ``truncated``, ``unanswered``, ``misread``."""
 
@@ -41,6 +42,8 @@ class LookOptions:
     offline: bool = False
     again: bool = False
     age_limit_days: float | None = None
+    partial: bool = False
+    """Only some catalogs are looked at: the searches are kept, the answer is not, lest it pass for the whole one."""
     assumptions: Assumptions = field(default_factory=Assumptions)
 
 
@@ -107,6 +110,10 @@ def look(
         store_name=store.name,
         remarks=store.remarks,
     )
+    if options.partial:
+        if run_id != NO_RUN:
+            store.finish_run(run_id)
+        return replace(answer, remarks=(*answer.remarks, PARTIAL))
     if run_id == NO_RUN:
         # nothing was asked: an answer that is already the latest is not kept twice
         known = store.same_answer(target_id, answer)

@@ -303,6 +303,8 @@ class Measured:
     value: float
     error: float
     is_limit: bool
+    flux_cgs: float | None = None
+    """The same as observed flux: in the band for X-rays, nu F_nu otherwise."""
 
 
 @dataclass(frozen=True)

@@ -12,6 +12,7 @@ import numpy as np
 
 from xmatch.assumptions import Assumptions
 from xmatch.catalogs.model import Catalog
+from xmatch.flux.physical import observed_flux_cgs
 from xmatch.limits.coverage import covered_fraction
 from xmatch.limits.depth import limit_for_band
 from xmatch.limits.hiding import raise_limit
@@ -24,6 +25,7 @@ from xmatch.match.chance import chance_within
 from xmatch.match.decide import Weighed, candidates, outcome, weigh
 from xmatch.plan import FASTEST_STAR_ARCSEC_YR
 from xmatch.records import (
+    Candidate,
     Finding,
     Limit,
     Outcome,
@@ -132,9 +134,15 @@ def _finding(
         n_compatible=int(own.compatible.sum()),
         density_per_deg2=own.density_per_deg2 if np.isfinite(own.density_per_deg2) else None,
         expected_chance=own.expected_chance,
-        candidates=candidates(own, item.rows, catalog.id, catalog.band_list),
+        candidates=tuple(_with_flux(one) for one in candidates(own, item.rows, catalog.id, catalog.band_list)),
         limits=limits,
     )
+
+
+def _with_flux(candidate: Candidate) -> Candidate:
+    """The candidate with every listed value also as a flux."""
+    photometry = tuple(replace(one, flux_cgs=observed_flux_cgs(one.value, one.band)) for one in candidate.photometry)
+    return replace(candidate, photometry=photometry)
 
 
 def _position_says(

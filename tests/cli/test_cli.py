@@ -77,6 +77,7 @@ def test_bad_input_is_refused_with_exit_code_2_and_nothing_is_written(tmp_path: 
     assert done.stderr.strip()
     assert "Traceback" not in done.stderr
     assert not done.stdout
+    assert not store.exists()
 
 
 def test_an_ambiguous_position_is_echoed_in_both_readings() -> None:

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import json
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
-from astropy.table import Table
+from checking import rows
 
 from xmatch.assumptions import Assumptions
 from xmatch.classes.engine import standings
@@ -35,8 +34,7 @@ from xmatch.records import (
 )
 from xmatch.spin.figures import figures
 
-CHECKS = Path(__file__).parents[2] / "fixtures" / "published" / "classes.ecsv"
-ROWS = [dict(zip(table.colnames, row, strict=True)) for table in [Table.read(CHECKS)] for row in table.iterrows()]
+ROWS = rows("classes")
 CLEAR = Assumptions(column_cm2=0.0, av_mag=0.0)
 FRACTION = 0.965382
 """Part of a blackbody of 0.3 keV in 0.3-10 keV, computed with scipy 1.17.1."""
@@ -147,8 +145,7 @@ def value(folder: Path, quantity: str, inputs: dict[str, Any]) -> float:
 
 @pytest.mark.parametrize("row", ROWS, ids=[str(row["id"]) for row in ROWS])
 def test_published_value(row: dict[str, Any], tmp_path: Path) -> None:
-    assert row["source"]
-    found = value(tmp_path, row["quantity"], json.loads(row["inputs"]))
+    found = value(tmp_path, row["quantity"], row["inputs"])
     assert found == pytest.approx(row["expected"], abs=row["tolerance"]), row["source"]
 
 

@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-import json
 import math
 import warnings
-from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
 from astropy import units as u
-from astropy.table import Table
+from checking import rows, tolerance
 
 from xmatch.records import Spin
 from xmatch.spin import rotation
@@ -24,16 +22,8 @@ from xmatch.spin.death_lines import (
 )
 from xmatch.spin.figures import figures
 
-CHECKS = Path(__file__).parents[2] / "fixtures" / "published" / "spin.ecsv"
-ROWS = [dict(zip(table.colnames, row, strict=True)) for table in [Table.read(CHECKS)] for row in table.iterrows()]
+ROWS = rows("spin")
 LINES = (*FIELD_LINES, *DERIVATIVE_LINES)
-
-
-def near(expected: float, tolerance: str) -> Any:
-    number, *kind = tolerance.split()
-    if kind == ["rel"]:
-        return pytest.approx(expected, rel=float(number))
-    return pytest.approx(expected, abs=float(number), rel=0.0)
 
 
 def value(quantity: str, inputs: dict[str, Any]) -> float:
@@ -48,9 +38,8 @@ def value(quantity: str, inputs: dict[str, Any]) -> float:
 
 @pytest.mark.parametrize("row", ROWS, ids=[str(row["id"]) for row in ROWS])
 def test_published_value(row: dict[str, Any]) -> None:
-    assert row["source"]
-    found = value(row["quantity"], json.loads(row["inputs"]))
-    assert found == near(row["expected"], row["tolerance"]), row["source"]
+    found = value(row["quantity"], row["inputs"])
+    assert found == pytest.approx(row["expected"], **tolerance(row["tolerance"])), row["source"]
 
 
 # arXiv:2503.07936: a 41 s pulsar, Pdot = 1.25e-14, lies below the death line; Zhang et al. 2000 eq. 9 gives -13.30

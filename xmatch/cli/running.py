@@ -45,7 +45,7 @@ def run_look(
         if name not in registry:
             raise ConfigurationError(f"--only {name!r} names no catalog; there are {', '.join(registry)}")
     chosen = {name: catalog for name, catalog in registry.items() if not only or name in only}
-    options = LookOptions(offline=offline, again=again, age_limit_days=age_limit_days)
+    options = LookOptions(offline=offline, again=again, age_limit_days=age_limit_days, partial=bool(only))
     with open_store(store) as opened:
         if show_requests:
             for text in requests_of(target, store=opened, catalogs=chosen, options=options):

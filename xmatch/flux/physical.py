@@ -72,16 +72,19 @@ def edges_kev(band: Band) -> tuple[float, float]:
     return band.nu_low_hz / KEV_HZ, band.nu_high_hz / KEV_HZ
 
 
-def observed(value: float, band: Band, assumptions: Assumptions) -> tuple[float, float]:
-    """Flux density at ``band.nu_hz`` (Jy) and flux (erg s^-1 cm^-2) of a value in the band's unit, as observed.
+def observed_flux_cgs(value: float, band: Band) -> float:
+    """Flux as observed, erg s^-1 cm^-2, of a value in the band's unit: in the band for X-rays, nu F_nu otherwise."""
+    if band.quantity is Quantity.BAND_FLUX:
+        return value
+    return float(nu_f_nu_cgs(to_flux_density_jy(value, band), band.nu_hz))
 
-    The flux is the band flux for X-rays and nu F_nu otherwise (definitions).
-    """
+
+def observed_density_jy(value: float, band: Band, assumptions: Assumptions) -> float:
+    """Flux density as observed at ``band.nu_hz``, Jy; a band flux is spread by the assumed power law."""
     if band.quantity is Quantity.BAND_FLUX:
         spectrum = PowerLaw(assumptions.photon_index)
-        return float(flux_density_jy(spectrum, value, edges_kev(band), band.nu_hz / KEV_HZ)), value
-    jy = float(to_flux_density_jy(value, band))
-    return jy, float(nu_f_nu_cgs(jy, band.nu_hz))
+        return float(flux_density_jy(spectrum, value, edges_kev(band), band.nu_hz / KEV_HZ))
+    return float(to_flux_density_jy(value, band))
 
 
 def band_transmission(band: Band, assumptions: Assumptions) -> tuple[float, str]:
@@ -132,7 +135,7 @@ def physical_limit(limit: Limit, target: Target, assumptions: Assumptions) -> Ph
         without a distance.
     """
     band = limit.band
-    jy, flux = observed(limit.value, band, assumptions)
+    jy, flux = observed_density_jy(limit.value, band, assumptions), observed_flux_cgs(limit.value, band)
     through, note = band_transmission(band, assumptions)
     blind = not through >= assumptions.blind_transmission
     corrected = None if blind else flux / through

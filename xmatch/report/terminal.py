@@ -133,7 +133,7 @@ def _finding(look: Look, finding: Finding, width: int) -> Iterator[tuple[str, st
     yield from _wrap(finding.why, width, " " * 6)
     for candidate in finding.candidates[:SHOWN_CANDIDATES]:
         listed = ", ".join(
-            f"{m.band.name} {'limit ' if m.is_limit else ''}{number(m.value, 4)} {m.band.unit}"
+            f"{m.band.name} {'limit ' if m.is_limit else ''}{number(m.value, 4)} {m.band.unit}{f' = {number(m.flux_cgs)} erg/s/cm^2' if m.flux_cgs is not None else ''}"
             for m in candidate.photometry
         )
         yield from _wrap(

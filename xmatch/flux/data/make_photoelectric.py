@@ -8,8 +8,8 @@ xraydb package (MIT licence). One fifth of the hydrogen is molecular and absorbs
 atom (Wilms, Allen & McCray 2000, section 2; both digits from memory). Grains are left out: they lower the
 cross-section by a few per cent below 1 keV.
 
-The energy grid is logarithmic and has a pair of points around every absorption edge, so that straight lines in
-log-log between neighbours follow the curve to 0.2 per cent.
+The energy grid is logarithmic and has a pair of points around every absorption edge of every element, 0.01 eV to either
+side, so that straight lines in log-log between neighbours follow the curve to 0.2 per cent.
 """
 
 from __future__ import annotations
@@ -29,6 +29,7 @@ MOLECULE_OVER_ATOM = 2.85
 AVOGADRO = 6.02214076e23  # SI Brochure 9 (2019), exact
 LOW_EV, HIGH_EV = 100.0, 20000.0
 STEP = 0.01  # of the logarithm
+BESIDE_EDGE_EV = 0.01
 
 
 def sigma_cm2(energy_ev: np.ndarray) -> np.ndarray:
@@ -49,10 +50,10 @@ def grid_ev() -> tuple[np.ndarray, list[float]]:
         edge.energy
         for element in ABUNDANCE
         for edge in xraydb.xray_edges(element).values()
-        if LOW_EV < edge.energy < HIGH_EV and ABUNDANCE[element] > 1.0e-6
+        if LOW_EV < edge.energy < HIGH_EV
     )
     smooth = np.exp(np.arange(np.log(LOW_EV), np.log(HIGH_EV) + STEP, STEP))
-    around = [edge + side for edge in edges for side in (-0.51, 0.51)]
+    around = [edge + side for edge in edges for side in (-BESIDE_EDGE_EV, BESIDE_EDGE_EV)]
     return np.unique(np.clip(np.round(np.concatenate([smooth, around]), 3), LOW_EV, HIGH_EV)), edges
 
 
@@ -67,7 +68,7 @@ def main() -> None:
         file.write("#\n# edges_kev: " + " ".join(f"{edge / 1e3:.5f}" for edge in edges) + "\n")
         file.write("energy_kev,sigma_cm2_per_h\n")
         for e, s in zip(energy, sigma, strict=True):
-            file.write(f"{e / 1e3:.6f},{s:.6e}\n")
+            file.write(f"{e / 1e3:.8f},{s:.6e}\n")
     print(f"{path}: {len(energy)} rows, {len(edges)} edges")
 
 
