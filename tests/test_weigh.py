@@ -79,6 +79,13 @@ def test_outside_the_footprint_is_not_covered_and_gives_no_limit() -> None:
     assert finding.limits == () and finding.coverage_fraction == 0.0
 
 
+def test_a_failure_outside_the_footprint_takes_nothing_away_and_is_told() -> None:
+    finding = one("ps1-dr1", None, failed=search(REGISTRY["ps1-dr1"], ReplyStatus.MISREAD))
+    assert finding.outcome is Outcome.NOT_COVERED
+    assert "no usable answer either (what was seen)" in finding.why and finding.limits == ()
+    assert one("ps1-dr1", None).outcome is Outcome.NOT_COVERED
+
+
 def test_rows_outside_the_stated_footprint_cast_doubt_on_it() -> None:
     finding = one("ps1-dr1", rows(REGISTRY["ps1-dr1"], 50))
     assert finding.outcome is Outcome.NOT_COVERED

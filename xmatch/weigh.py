@@ -114,6 +114,12 @@ def _finding(
         age_s=item.age_s,
     )
     if own is None or item.rows is None:
+        if fraction == 0.0:
+            # nothing follows from such an answer anyway, so a failure to get it takes nothing away
+            unread = f"; the archive gave no usable answer either ({item.failed.detail})" if item.failed else ""
+            return replace(
+                base, outcome=Outcome.NOT_COVERED, why=f"outside the footprint ({_footprint(catalog)}){unread}"
+            )
         if item.failed is not None:
             return replace(base, outcome=_FAILED[item.failed.status], why=item.failed.detail)
         return base

@@ -26,7 +26,7 @@ ELECTRONS_PER_H = 1.2
 """Electrons per hydrogen atom, helium included (definition for solar helium, rounded)."""
 THOMSON_ABOVE_KEV = 10.0
 """Scattering is added above this energy, where it rivals absorption (common practice, no source)."""
-NODES_PER_CELL = 4
+NODES_PER_CELL = 3
 """Gauss-Legendre nodes between two points of the table."""
 
 # Morrison & McCammon 1983, ApJ 270, 119, table 2: upper edge (keV) and c0, c1, c2 of
@@ -52,6 +52,12 @@ MORRISON = np.array(
 )
 
 
+def _span(e_kev: Floats) -> str:
+    """What a message says of many energies: the one, or the lowest and the highest."""
+    low, high = e_kev.min(), e_kev.max()
+    return f"{low:.4g}" if low == high else f"{low:.4g} to {high:.4g}"
+
+
 def cross_section_morrison_cm2(e_kev: ArrayLike) -> Floats:
     """Photoelectric cross-section per hydrogen atom, cm^2, 0.03-10 keV (Morrison & McCammon 1983, ApJ 270, 119).
 
@@ -61,8 +67,8 @@ def cross_section_morrison_cm2(e_kev: ArrayLike) -> Floats:
         Outside 0.03 to 10 keV.
     """
     e = np.asarray(e_kev, dtype=float)
-    if np.any((e < MORRISON_LOW_KEV) | (e > MORRISON[-1, 0])):
-        raise RangeError(f"energy {e_kev} keV is outside 0.03 to 10 keV, where the 1983 polynomial holds")
+    if np.any(~((e >= MORRISON_LOW_KEV) & (e <= MORRISON[-1, 0]))):
+        raise RangeError(f"energy {_span(e)} keV is outside 0.03 to 10 keV, where the 1983 polynomial holds")
     c = MORRISON[np.searchsorted(MORRISON[:, 0], e, side="left")]
     return (c[..., 1] + c[..., 2] * e + c[..., 3] * e**2) / e**3 * 1.0e-24
 
@@ -91,7 +97,8 @@ def cross_section_cm2(e_kev: ArrayLike) -> Floats:
     e = np.asarray(e_kev, dtype=float)
     if np.any(~((e >= LOW_KEV * (1.0 - 1.0e-9)) & (e <= HIGH_KEV * (1.0 + 1.0e-9)))):
         raise RangeError(
-            f"energy {e_kev} keV is outside {LOW_KEV:g} to {HIGH_KEV:g} keV, the range of the cross-section"
+            f"energy {_span(e)} keV is outside {LOW_KEV:g} to {HIGH_KEV:g} keV, the range of the cross-section; "
+            "cut the band or take transmitted_through_all"
         )
     log_e, log_s = _table()
     sigma = np.exp(np.interp(np.log(e), log_e, log_s))
@@ -159,3 +166,61 @@ def transmitted_fractions(
     weight = np.array([w * spectrum.energy_flux(e) for spectrum in spectra])
     through = np.exp(-np.multiply.outer(column, sigma))
     return np.moveaxis(through @ (weight / weight.sum(axis=1, keepdims=True)).T, -1, 0)
+
+
+def transmitted_through_all(spectrum: Spectrum, low_kev: float, high_kev: float, column_cm2: float) -> float:
+    """The same for any X-ray band, also one that reaches past the table.
+
+    Returns
+    -------
+    float
+        In [0, 1]; ``nan`` for a band that starts below 0.1 keV, where the table says nothing and little gets through.
+
+    Notes
+    -----
+    Above 20 keV the cross-section is held at its value there. Absorption falls further and scattering does not rise
+    (Klein & Nishina 1929, Z. Phys. 52, 853), so that the fraction is a lower bound and a corrected limit stays a limit.
+    """
+    if not low_kev >= LOW_KEV * (1.0 - 1.0e-9):
+        return np.nan
+    if high_kev <= HIGH_KEV * (1.0 + 1.0e-9):
+        return float(transmitted_fraction(spectrum, low_kev, high_kev, column_cm2))
+    turn = max(low_kev, HIGH_KEV)
+    hard = float(spectrum.band_integral(turn, high_kev))
+    arriving = hard * float(np.exp(-column_cm2 * cross_section_cm2(HIGH_KEV)))
+    if low_kev >= HIGH_KEV:
+        return arriving / hard
+    soft = float(spectrum.band_integral(low_kev, HIGH_KEV))
+    through = float(transmitted_fraction(spectrum, low_kev, HIGH_KEV, column_cm2))
+    return (soft * through + arriving) / (soft + hard)
+
+
+def absorbed_band_ratio(
+    spectrum: Spectrum, from_kev: tuple[float, float], to_kev: tuple[float, float], column_cm2: ArrayLike
+) -> Floats:
+    """Factor from the observed flux in one band to that in another, behind a column.
+
+    Parameters
+    ----------
+    spectrum : Spectrum
+        Shape of the emitted spectrum.
+    from_kev, to_kev : tuple of float
+        Bands, within 0.1-20 keV.
+    column_cm2 : array_like
+        Equivalent hydrogen column, >= 0, any shape.
+
+    Returns
+    -------
+    ndarray
+        ``nan`` where nothing of the first band arrives.
+
+    Notes
+    -----
+    Ratio of band integrals times that of the transmitted fractions (definition). The flux that a catalog quotes is taken as
+    the observed one: how its counts became energy depends on the survey's response, which is not undone here.
+    """
+    start = transmitted_fraction(spectrum, *from_kev, column_cm2)
+    arrive = transmitted_fraction(spectrum, *to_kev, column_cm2)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        ratio = np.where(start > 0.0, arrive / start, np.nan)
+    return ratio * spectrum.band_integral(*to_kev) / spectrum.band_integral(*from_kev)

@@ -23,11 +23,16 @@ RELATIONS = {
 DEFAULT_RELATION = "Foight et al. 2016"
 
 
+def _at_least_zero(value: ArrayLike, what: str, unit: str) -> Floats:
+    array = np.asarray(value, dtype=float)
+    if np.any(~(array >= 0.0)):
+        raise RangeError(f"{what} {value} {unit} is not allowed; it must be 0 or more")
+    return array
+
+
 def column_from_dm_cm2(dm_pc_cm3: ArrayLike) -> tuple[Floats, Floats, Floats]:
     """Column behind a dispersion measure with its range: nominal, low, high, cm^-2 (He, Ng & Kaspi 2013, ApJ 768, 64)."""
-    dm = np.asarray(dm_pc_cm3, dtype=float)
-    if np.any(~(dm >= 0.0)):
-        raise RangeError(f"dispersion measure {dm_pc_cm3} pc cm^-3 is not allowed; it must be 0 or more")
+    dm = _at_least_zero(dm_pc_cm3, "dispersion measure", "pc cm^-3")
     return COLUMN_PER_DM_CM2 * dm, COLUMN_PER_DM_LOW_CM2 * dm, COLUMN_PER_DM_HIGH_CM2 * dm
 
 
@@ -45,3 +50,27 @@ def column_per_av_cm2(relation: str = DEFAULT_RELATION, abundances: str = WILMS)
     if own != abundances:
         raise RangeError(f"{relation} belongs to the abundances of {own}, not of {abundances}; choose one that fits")
     return value
+
+
+def av_from_column_mag(
+    column_cm2: ArrayLike, relation: str = DEFAULT_RELATION, abundances: str = WILMS
+) -> Floats:
+    """A_V behind a column, magnitudes, by one of :data:`RELATIONS` (sources there).
+
+    Raises
+    ------
+    RangeError
+        For a column below 0, or a relation of other abundances.
+    """
+    return _at_least_zero(column_cm2, "column", "cm^-2") / column_per_av_cm2(relation, abundances)
+
+
+def column_from_av_cm2(av_mag: ArrayLike, relation: str = DEFAULT_RELATION, abundances: str = WILMS) -> Floats:
+    """Column behind an A_V, cm^-2: the inverse of :func:`av_from_column_mag`.
+
+    Raises
+    ------
+    RangeError
+        For an A_V below 0, or a relation of other abundances.
+    """
+    return _at_least_zero(av_mag, "A_V", "mag") * column_per_av_cm2(relation, abundances)

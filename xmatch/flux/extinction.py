@@ -84,7 +84,7 @@ def band_extinction_mag(band: Band, av_mag: ArrayLike, *, law: str = LAWS[0], r_
     coefficient (definition).
     """
     av = np.asarray(av_mag, dtype=float)
-    if np.any(av < 0.0):
+    if np.any(~(av >= 0.0)):
         raise RangeError(f"A_V {av_mag} mag is not allowed; it must be 0 or more")
     low_um, high_um = C_CM_S / band.nu_high_hz / UM_CM, C_CM_S / band.nu_low_hz / UM_CM
     if low_um > HIGH_UM:

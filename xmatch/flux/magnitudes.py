@@ -14,7 +14,10 @@ AB_ZERO_JY = 10.0 ** (-0.4 * 48.60) / JY_CGS
 ST_ZERO_CGS_A = 10.0 ** (-0.4 * 21.10)
 """f_lambda of ST magnitude 0, erg s^-1 cm^-2 A^-1 (Koornneef et al. 1986, Highlights of Astronomy 7, 833)."""
 ANGSTROM_CM = 1.0e-8
-JY_PER_UNIT = {"Jy": 1.0, "mJy": 1.0e-3, "uJy": 1.0e-6}
+JY_PER_UNIT = {"Jy": 1.0, "mJy": 1.0e-3, "uJy": 1.0e-6, "mJy/beam": 1.0e-3}
+"""Units of flux-density columns. A peak per beam is the flux density of a point source, which is what is looked for."""
+MAG_PER_RELATIVE = 2.5 / np.log(10.0)
+"""Magnitudes per relative flux error, 1.0857 (definition)."""
 
 
 def _to_mag(ratio: Floats) -> Floats:
@@ -56,6 +59,11 @@ def st_to_jy(mag: ArrayLike, pivot_angstrom: ArrayLike) -> Floats:
     return f_lambda * lam_cm**2 / C_CM_S / JY_CGS
 
 
+def jy_to_st(flux_jy: ArrayLike, pivot_angstrom: ArrayLike) -> Floats:
+    """Jy to ST magnitude; ``nan`` for a flux of zero or less (Koornneef et al. 1986)."""
+    return _to_mag(np.asarray(flux_jy, dtype=float) / st_to_jy(0.0, pivot_angstrom))
+
+
 def asinh_to_ratio(mag: ArrayLike, softening: ArrayLike) -> Floats:
     """Asinh magnitude to flux over the zero flux, of either sign (Lupton, Gunn & Szalay 1999, AJ 118, 1406)."""
     b = np.asarray(softening, dtype=float)
@@ -85,6 +93,27 @@ def to_flux_density_jy(value: ArrayLike, band: Band) -> Floats:
     if band.quantity is Quantity.FLUX_DENSITY and band.unit in JY_PER_UNIT:
         return np.asarray(value, dtype=float) * JY_PER_UNIT[band.unit]
     raise RangeError(f"{band.label}: a {band.quantity} in {band.unit} is not a flux density; give it a spectrum first")
+
+
+def flux_density_error_jy(value: ArrayLike, error: ArrayLike, band: Band) -> Floats:
+    """One-sigma error of :func:`to_flux_density_jy`, Jy, to first order.
+
+    Parameters
+    ----------
+    value, error : array_like
+        In the band's unit; ``nan`` passes through.
+
+    Notes
+    -----
+    A magnitude error is a relative flux error (definition), and the flux scale's own error is added in quadrature.
+    """
+    flux = to_flux_density_jy(value, band)
+    sigma = np.abs(np.asarray(error, dtype=float))
+    if band.quantity is Quantity.MAGNITUDE:
+        own = flux * sigma / MAG_PER_RELATIVE
+    else:
+        own = sigma * JY_PER_UNIT[band.unit]
+    return np.hypot(own, band.flux_scale_error * flux)
 
 
 def nu_f_nu_cgs(flux_jy: ArrayLike, nu_hz: ArrayLike) -> Floats:

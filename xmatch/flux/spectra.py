@@ -48,11 +48,20 @@ def power_integral(low: ArrayLike, high: ArrayLike, exponent: ArrayLike) -> Floa
     return a**p * np.where(small, log * (1.0 + 0.5 * p * log), np.expm1(safe * log) / safe)
 
 
+def _temperature(kt_kev: float) -> None:
+    if not 0.0 < kt_kev < np.inf:
+        raise RangeError(f"temperature {kt_kev} keV is not allowed; it must be above 0 and finite")
+
+
 @dataclass(frozen=True)
 class PowerLaw:
     """N(E) = (E / 1 keV)^-index photons cm^-2 s^-1 keV^-1."""
 
     photon_index: float
+
+    def __post_init__(self) -> None:
+        if not np.isfinite(self.photon_index):
+            raise RangeError(f"photon index {self.photon_index} is not allowed; it must be a finite number")
 
     def energy_flux(self, e_kev: ArrayLike) -> Floats:
         """E N(E), keV cm^-2 s^-1 keV^-1."""
@@ -69,6 +78,9 @@ class Blackbody:
 
     kt_kev: float
 
+    def __post_init__(self) -> None:
+        _temperature(self.kt_kev)
+
     def energy_flux(self, e_kev: ArrayLike) -> Floats:
         """E N(E) up to a constant."""
         x = np.asarray(e_kev, dtype=float) / self.kt_kev
@@ -84,6 +96,9 @@ class ThermalBremsstrahlung:
     """E N(E) ~ exp(-E/kT): free-free emission with a Gaunt factor of 1, which is good to about 30 % (stated)."""
 
     kt_kev: float
+
+    def __post_init__(self) -> None:
+        _temperature(self.kt_kev)
 
     def energy_flux(self, e_kev: ArrayLike) -> Floats:
         """E N(E) up to a constant."""

@@ -28,7 +28,7 @@ MOLECULAR_FRACTION = 0.2
 MOLECULE_OVER_ATOM = 2.85
 AVOGADRO = 6.02214076e23  # SI Brochure 9 (2019), exact
 LOW_EV, HIGH_EV = 100.0, 20000.0
-STEP = 0.01  # of the logarithm
+STEP = 0.007  # of the logarithm
 BESIDE_EDGE_EV = 0.01
 
 
