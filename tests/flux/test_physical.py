@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 
 from xmatch.assumptions import Assumptions
 from xmatch.catalogs import load_catalogs
+from xmatch.constants import KEV_HZ
 from xmatch.errors import RangeError
 from xmatch.flux.absorption import cross_section_cm2, cross_section_morrison_cm2, transmitted_fraction
 from xmatch.flux.column import column_per_av_cm2
@@ -25,10 +26,10 @@ from xmatch.flux.magnitudes import (
     to_flux_density_jy,
     vega_to_jy,
 )
-from xmatch.flux.physical import NO_COLUMN, physical_limit, resolve
+from xmatch.flux.physical import NO_COLUMN, ZERO_COLUMN, band_transmission, physical_limit, resolve
 from xmatch.flux.spectra import Blackbody, PowerLaw, ThermalBremsstrahlung, power_integral, radio_band_flux_cgs
 from xmatch.limits.depth import limit_for_band
-from xmatch.records import Band, Distance, Limit, Position, Target
+from xmatch.records import Band, Distance, Limit, Position, Target, Waveband
 
 BANDS = {columns.band.label: columns.band for catalog in load_catalogs().values() for columns in catalog.bands}
 XRAY = BANDS["erass1-main 0.2-2.3 keV"]
@@ -63,6 +64,44 @@ def test_an_extinction_alone_gives_the_column() -> None:
 def test_no_column_at_all_is_said() -> None:
     none = resolve(replace(TARGET, dm_pc_cm3=None), Assumptions())
     assert (none.column_cm2, none.column_origin, none.av_mag) == (0.0, NO_COLUMN, 0.0)
+
+
+def test_a_column_given_as_zero_is_not_called_missing() -> None:
+    none = resolve(replace(TARGET, dm_pc_cm3=None, column_cm2=0.0, column_origin="mine"), Assumptions())
+    assert (none.column_cm2, none.column_origin, none.av_mag, none.av_origin) == (0.0, "mine", 0.0, ZERO_COLUMN)
+
+
+def xray_band(low_kev: float, high_kev: float, waveband: Waveband) -> Band:
+    low, high = low_kev * KEV_HZ, high_kev * KEV_HZ
+    return replace(XRAY, nu_low_hz=low, nu_high_hz=high, nu_hz=(low * high) ** 0.5, waveband=waveband)
+
+
+def test_a_hard_band_past_the_table_is_hardly_absorbed_and_says_how() -> None:
+    band = xray_band(14.0, 195.0, Waveband.HARD_XRAY)
+    p = physical_limit(replace(limit_of(XRAY), band=band), TARGET, A)
+    assert 0.99 < p.transmitted < 1.0
+    assert "held at its 20 keV cross-section" in p.note
+    assert len(p.luminosity_erg_s) == 3
+
+
+def test_gamma_rays_get_through() -> None:
+    p = physical_limit(replace(limit_of(XRAY), band=xray_band(1e5, 1e8, Waveband.GAMMA)), TARGET, A)
+    assert p.transmitted == 1.0 and p.corrected_flux_cgs == p.flux_cgs
+    assert "gamma rays" in p.note
+
+
+def test_a_band_below_the_table_is_left_uncorrected() -> None:
+    p = physical_limit(replace(limit_of(XRAY), band=xray_band(0.05, 2.0, Waveband.SOFT_XRAY)), TARGET, A)
+    assert np.isnan(p.transmitted) and p.corrected_flux_cgs is None and p.luminosity_erg_s == ()
+    assert "starts at 0.1 keV" in p.note
+
+
+def test_a_list_of_objects_is_absorbed_as_its_band_is() -> None:
+    xray = xray_band(0.3, 10.0, Waveband.SOFT_XRAY)
+    assert band_transmission(replace(xray, waveband=Waveband.OBJECT_LIST), A) == band_transmission(xray, A)
+    ks = BANDS["2mass-psc Ks"]
+    assert band_transmission(replace(ks, waveband=Waveband.OBJECT_LIST), A) == band_transmission(ks, A)
+    assert band_transmission(BANDS["atnf-psr 1.4 GHz"], A)[0] == 1.0
 
 
 def test_an_xray_limit_is_corrected_and_says_by_what() -> None:

@@ -55,6 +55,9 @@ def test_published_value(row: dict[str, Any]) -> None:
         ("2mass-psc", "Ks", "2MASS_Ks", 0.01),
         ("catwise2020", "W1", "WISE_RSR_W1", 0.012),
         ("catwise2020", "W2", "WISE_RSR_W2", 0.012),
+        # the library's Gaia curves are those of DR2, which differ by 1 % in G and RP and too much in BP
+        ("gaia-dr3", "G", "GaiaDR2v2_G", 0.01),
+        ("gaia-dr3", "RP", "GaiaDR2v2_RP", 0.015),
     ],
 )
 def test_vega_zero_points_against_a_photometry_library(catalog_id: str, band: str, curve: str, within: float) -> None:
@@ -107,9 +110,43 @@ def test_extinction_ratios_of_the_common_bands(um: float, ratio: float) -> None:
 # xraydb 4.5.8 (Elam, Ravel & Sieber 2002), abundances of Wilms, Allen & McCray 2000: the element sum itself, off the grid
 def test_the_packaged_cross_section_is_its_element_sum() -> None:
     rng = np.random.default_rng(8)
-    e_kev = np.exp(rng.uniform(np.log(0.12), np.log(9.9), 400))
-    exact = make_photoelectric.sigma_cm2(e_kev * 1.0e3)
+    e_kev = np.exp(rng.uniform(np.log(absorption.LOW_KEV), np.log(absorption.HIGH_KEV), 4000))
+    edges_kev = np.array(make_photoelectric.grid_ev()[1]) / 1.0e3
+    beside = make_photoelectric.BESIDE_EDGE_EV / 1.0e3  # between a pair of points the step itself is drawn as a ramp
+    e_kev = e_kev[np.abs(e_kev[:, None] - edges_kev).min(axis=1) > beside]
+    scattered = np.where(e_kev > 10.0, 1.2 * 6.6524587e-25, 0.0)  # Thomson, CODATA 2018, 1.2 electrons per H
+    exact = make_photoelectric.sigma_cm2(e_kev * 1.0e3) + scattered
     assert absorption.cross_section_cm2(e_kev) == pytest.approx(exact, rel=2e-3)
+    assert absorption.cross_section_cm2(edges_kev * 1.0001) == pytest.approx(
+        make_photoelectric.sigma_cm2(edges_kev * 1.0001e3), rel=2e-3
+    )
+
+
+# Morrison & McCammon 1983, ApJ 270, 119: their polynomial gives 0.5314. The abundances of Wilms, Allen & McCray 2000, ApJ 542,
+# 914, hold fewer metals: their cross-section is 0.67 to 0.68 of the older one at 2-7 keV (computed: both tables in astromodels)
+def test_transmission_of_the_polynomial() -> None:
+    def passed(n_h: float) -> float:
+        return quad(lambda e: np.exp(-n_h * float(absorption.cross_section_morrison_cm2(e))) / e, 2.0, 10.0, limit=200,
+                    points=[2.471, 3.210, 4.038, 7.111, 8.331], epsabs=0.0, epsrel=1e-9)[0]  # fmt: skip
+
+    old = passed(1e23) / passed(0.0)
+    assert old == pytest.approx(0.5314, abs=1e-4)  # computed: trapezoid of 2e5 points
+    new = float(absorption.transmitted_fraction(spectra.PowerLaw(2.0), 2.0, 10.0, 1e23))
+    assert old < new < passed(0.667e23) / passed(0.0)
+
+
+# Schlafly & Finkbeiner 2011, ApJ 737, 103, table 6: A / E(B-V) of the dust maps of 1998, on a scale of 0.86; by the law of
+# Fitzpatrick 1999, which is another one than ours: 10 %
+@pytest.mark.parametrize(("um", "ratio"), [(0.617, 2.285), (1.235, 0.723), (1.662, 0.460), (2.159, 0.310)])
+def test_extinction_against_a_published_table(um: float, ratio: float) -> None:
+    assert float(extinction.extinction_ratio(um)) * 3.1 * 0.86 == pytest.approx(ratio, rel=0.10)
+
+
+# Riello et al. 2021, A&A 649, A3: the zero points of G in the Vega and the AB system, 25.6873668671 and 25.8010446445
+def test_the_gaia_zero_point_against_its_own_ab_scale() -> None:
+    g = next(c.band for c in load_catalogs()["gaia-dr3"].bands if c.band.name == "G")
+    ab_minus_vega = 2.5 * np.log10(magnitudes.AB_ZERO_JY / g.zero_point_jy)
+    assert ab_minus_vega == pytest.approx(25.8010446445 - 25.6873668671, abs=0.02)
 
 
 # adaptive quadrature of scipy over the same curve, cut at the absorption edges

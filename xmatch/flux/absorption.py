@@ -176,6 +176,11 @@ def transmitted_through_all(spectrum: Spectrum, low_kev: float, high_kev: float,
     float
         In [0, 1]; ``nan`` for a band that starts below 0.1 keV, where the table says nothing and little gets through.
 
+    Raises
+    ------
+    RangeError
+        For a negative column.
+
     Notes
     -----
     Above 20 keV the cross-section is held at its value there. Absorption falls further and scattering does not rise
@@ -185,14 +190,14 @@ def transmitted_through_all(spectrum: Spectrum, low_kev: float, high_kev: float,
         return np.nan
     if high_kev <= HIGH_KEV * (1.0 + 1.0e-9):
         return float(transmitted_fraction(spectrum, low_kev, high_kev, column_cm2))
-    turn = max(low_kev, HIGH_KEV)
-    hard = float(spectrum.band_integral(turn, high_kev))
-    arriving = hard * float(np.exp(-column_cm2 * cross_section_cm2(HIGH_KEV)))
+    if not column_cm2 >= 0.0:
+        raise RangeError(f"column {column_cm2} cm^-2 is not allowed; it must be 0 or more")
+    hard_through = float(np.exp(-column_cm2 * cross_section_cm2(HIGH_KEV)))
     if low_kev >= HIGH_KEV:
-        return arriving / hard
-    soft = float(spectrum.band_integral(low_kev, HIGH_KEV))
+        return hard_through
     through = float(transmitted_fraction(spectrum, low_kev, HIGH_KEV, column_cm2))
-    return (soft * through + arriving) / (soft + hard)
+    soft, hard = spectrum.band_integral(low_kev, HIGH_KEV), spectrum.band_integral(HIGH_KEV, high_kev)
+    return float((soft * through + hard * hard_through) / (soft + hard))
 
 
 def absorbed_band_ratio(

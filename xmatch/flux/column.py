@@ -52,9 +52,7 @@ def column_per_av_cm2(relation: str = DEFAULT_RELATION, abundances: str = WILMS)
     return value
 
 
-def av_from_column_mag(
-    column_cm2: ArrayLike, relation: str = DEFAULT_RELATION, abundances: str = WILMS
-) -> Floats:
+def av_from_column_mag(column_cm2: ArrayLike, relation: str = DEFAULT_RELATION, abundances: str = WILMS) -> Floats:
     """A_V behind a column, magnitudes, by one of :data:`RELATIONS` (sources there).
 
     Raises

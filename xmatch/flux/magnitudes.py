@@ -109,10 +109,7 @@ def flux_density_error_jy(value: ArrayLike, error: ArrayLike, band: Band) -> Flo
     """
     flux = to_flux_density_jy(value, band)
     sigma = np.abs(np.asarray(error, dtype=float))
-    if band.quantity is Quantity.MAGNITUDE:
-        own = flux * sigma / MAG_PER_RELATIVE
-    else:
-        own = sigma * JY_PER_UNIT[band.unit]
+    own = flux * sigma / MAG_PER_RELATIVE if band.quantity is Quantity.MAGNITUDE else sigma * JY_PER_UNIT[band.unit]
     return np.hypot(own, band.flux_scale_error * flux)
 
 

@@ -7,10 +7,10 @@ import math
 import numpy as np
 
 from xmatch.assumptions import Assumptions
-from xmatch.constants import KEV_HZ
-from xmatch.flux.absorption import transmitted_fraction
+from xmatch.constants import C_CM_S, KEV_HZ
+from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_through_all
 from xmatch.flux.column import DEFAULT_RELATION, column_from_dm_cm2, column_per_av_cm2
-from xmatch.flux.extinction import band_extinction_mag
+from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag
 from xmatch.flux.luminosity import distance_quantiles_pc, luminosity_erg_s
 from xmatch.flux.magnitudes import nu_f_nu_cgs, to_flux_density_jy
 from xmatch.flux.spectra import PowerLaw, flux_density_jy
@@ -19,6 +19,7 @@ from xmatch.records import Band, Limit, PhysicalLimit, Quantity, Target, Waveban
 QUANTILES = (0.0, 0.5, 1.0)
 """Near end, median under the prior, far end of the distance range."""
 NO_COLUMN = "no column, dispersion measure or extinction given: taken as zero"
+ZERO_COLUMN = "from the column, which is zero"
 
 
 def resolve(target: Target, assumptions: Assumptions) -> Assumptions:
@@ -63,7 +64,7 @@ def resolve(target: Target, assumptions: Assumptions) -> Assumptions:
         elif column > 0.0:
             av, av_origin = column / per_av, f"from the column, {DEFAULT_RELATION}"
         else:
-            av, av_origin = 0.0, NO_COLUMN
+            av, av_origin = 0.0, NO_COLUMN if column_origin == NO_COLUMN else ZERO_COLUMN
     return assumptions.but(column_cm2=column, column_origin=column_origin, av_mag=av, av_origin=av_origin)
 
 
@@ -89,21 +90,27 @@ def observed_density_jy(value: float, band: Band, assumptions: Assumptions) -> f
 
 def band_transmission(band: Band, assumptions: Assumptions) -> tuple[float, str]:
     """Fraction of the light that gets through, and by what assumptions, in words."""
-    if band.is_xray:
+    if band.waveband is Waveband.GAMMA:
+        return 1.0, "gamma rays: neither gas nor dust absorbs them"
+    if band.is_xray or (band.waveband is Waveband.OBJECT_LIST and band.nu_low_hz >= LOW_KEV * KEV_HZ):
         column = assumptions.column_cm2 or 0.0
         low, high = edges_kev(band)
-        through = float(transmitted_fraction(PowerLaw(assumptions.photon_index), low, high, column))
+        through = transmitted_through_all(PowerLaw(assumptions.photon_index), low, high, column)
+        if not math.isfinite(through):
+            return through, f"the absorption table starts at {LOW_KEV:g} keV: not corrected"
         note = (
             f"power law of photon index {assumptions.photon_index:g}, {low:.3g}-{high:.3g} keV, column {column:.2g} cm^-2 "
             f"({assumptions.column_origin}), {assumptions.abundances} abundances"
         )
+        if high > HIGH_KEV:
+            note += f", held at its {HIGH_KEV:g} keV cross-section above"
         if band.assumed_index is not None:
             note += (
                 f"; the catalog folded photon index {band.assumed_index:g} behind {band.assumed_column_cm2 or 0.0:.2g} cm^-2, "
                 "its flux is taken as the observed one"
             )
         return through, note
-    if band.waveband is Waveband.RADIO or band.waveband is Waveband.OBJECT_LIST:
+    if band.waveband is Waveband.RADIO or C_CM_S / band.nu_high_hz / UM_CM > HIGH_UM:
         return 1.0, "nu F_nu at the quoted frequency, nothing absorbed"
     av = assumptions.av_mag or 0.0
     magnitudes = float(band_extinction_mag(band, av, law=assumptions.extinction_law, r_v=assumptions.r_v))
