@@ -212,3 +212,11 @@ def test_the_same_seed_gives_the_same_standings(tmp_path: Path, archive: Any) ->
         with open_store(tmp_path / f"{name}.sqlite") as opened:
             answers.append(ask(opened, archive).standings)
     assert answers[0] == answers[1]
+
+
+def test_a_law_that_ends_before_a_band_leaves_it_uncorrected_and_the_answer_is_kept(store: Store, archive: Any) -> None:
+    law = "Cardelli, Clayton & Mathis 1989"  # ends at 3.3 um, short of W1
+    answer = ask(store, archive, assumptions=Assumptions(draws=5000, extinction_law=law))
+    w2 = next(limit for limit in answer.limits if limit.limit.band.name == "W2")
+    assert w2.corrected_flux_cgs is None and "not corrected" in w2.note
+    assert store.status()["limits"] == len(answer.limits)

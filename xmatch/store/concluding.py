@@ -167,7 +167,7 @@ def _put_limit(connection: Connection, finding_id: int, limit: Limit, item: Phys
         common = {
             "flux_density_jy": computed(item.flux_density_jy, f"flux density limit of {name}"),
             "flux_erg_s_cm2": required(item.flux_cgs, f"flux limit of {name}"),
-            "transmitted": computed(item.transmitted),
+            "transmitted": computed(item.transmitted, f"transmitted fraction of {name}"),
             "corrected_flux_erg_s_cm2": computed(item.corrected_flux_cgs, f"corrected flux limit of {name}"),
             "physical_note": text(item.note),
         }
