@@ -220,3 +220,10 @@ def test_a_law_that_ends_before_a_band_leaves_it_uncorrected_and_the_answer_is_k
     w2 = next(limit for limit in answer.limits if limit.limit.band.name == "W2")
     assert w2.corrected_flux_cgs is None and "not corrected" in w2.note
     assert store.status()["limits"] == len(answer.limits)
+
+
+def test_a_blind_band_is_said_and_the_answer_is_kept(store: Store, archive: Any) -> None:
+    answer = ask(store, archive, assumptions=Assumptions(draws=5000, column_cm2=5.0e23))
+    xray = next(limit for limit in answer.limits if limit.limit.band.is_xray)
+    assert xray.corrected_flux_cgs is None and xray.luminosity_erg_s == () and "blind" in xray.note
+    assert store.status()["limits"] == len(answer.limits)

@@ -191,8 +191,8 @@ def _put_limit(connection: Connection, finding_id: int, limit: Limit, item: Phys
         schema.limit_search,
         [{"limit_id": limit_id, "search_id": key} for key in dict.fromkeys(limit.search_ids)],
     )
-    if item is None:
-        return
+    if item is None or not item.luminosity_erg_s:
+        return  # blind or uncorrected bands and targets without a distance have none
     n = len(item.luminosity_erg_s)
     if n != len(item.distance_pc):
         raise RangeError(f"{name}: {n} luminosities for {len(item.distance_pc)} distances; there must be one each")
