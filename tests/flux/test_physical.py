@@ -220,6 +220,11 @@ def test_a_broad_band_saturates_where_a_constant_coefficient_would_not() -> None
     assert large < 0.85 * small
 
 
+def test_hundreds_of_magnitudes_do_not_underflow() -> None:
+    values = band_extinction_mag(BANDS["gaia-dr3 G"], np.array([10.0, 300.0, 3000.0]))
+    assert np.isfinite(values).all() and (np.diff(values) > 0.0).all()
+
+
 def test_extinction_is_zero_in_the_radio_and_undefined_in_xrays() -> None:
     assert float(band_extinction_mag(BANDS["nvss 1.4 GHz"], 10.0)) == 0.0
     assert np.isnan(band_extinction_mag(XRAY, 1.0))

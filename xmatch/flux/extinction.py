@@ -94,5 +94,7 @@ def band_extinction_mag(band: Band, av_mag: ArrayLike, *, law: str = LAWS[0], r_
     x, w = gauss_legendre(NODES)
     half, middle = 0.5 * (band.nu_high_hz - band.nu_low_hz), 0.5 * (band.nu_high_hz + band.nu_low_hz)
     ratio = extinction_ratio(C_CM_S / (middle + half * x) / UM_CM, law=law, r_v=r_v)
-    through = 10.0 ** (-0.4 * np.multiply.outer(av, ratio)) @ (w / w.sum())
-    return -2.5 * np.log10(through)
+    # the least dimmed wavelength is taken out first, so that a hundred magnitudes do not underflow
+    least = float(np.min(ratio))
+    through = 10.0 ** (-0.4 * np.multiply.outer(av, ratio - least)) @ (w / w.sum())
+    return av * least - 2.5 * np.log10(through)
