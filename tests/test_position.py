@@ -86,6 +86,7 @@ def test_both_notations_say_the_same_and_never_print_sixty(ra: float, dec: float
         ("5.0±1.0 kpc", 4000.0, 6000.0),
         ("18000..18000 ly", 5518.8, 5518.8),
         ("1..2 Mpc", 1.0e6, 2.0e6),
+        ("2..3 kly", 613.2, 919.8),
     ],
 )
 def test_distances(text: str, low: float, high: float) -> None:
@@ -105,6 +106,20 @@ def test_periods_and_pulses() -> None:
     assert parse_period("45.2 min") == pytest.approx(2712.0)
     assert parse_pulse("2.1 Jy @ 200 MHz for 35 s") == pytest.approx((2.0e8, 2.1, 35.0))
     assert parse_pulse("12 mJy @ 1.4 GHz for 0.5 min") == pytest.approx((1.4e9, 0.012, 30.0))
+
+
+def test_capitals_of_a_unit_count() -> None:
+    assert parse_pulse("2 µJy @ 800 kHz for 35 s") == pytest.approx((8.0e5, 2.0e-6, 35.0))  # micro sign
+    assert parse_pulse("2 μJy @ 800 kHz for 35 s") == pytest.approx((8.0e5, 2.0e-6, 35.0))  # Greek mu
+    for text in ("2 MJy @ 200 MHz for 35 s", "2 Jy @ 200 mHz for 35 s"):
+        with pytest.raises(TargetError, match="capitals count"):
+            parse_pulse(text)
+    with pytest.raises(TargetError, match="capitals count"):
+        parse_distance("1..2 mpc")
+
+
+def test_a_rounded_zero_declination_has_the_same_sign_in_both_notations() -> None:
+    assert format_position(10.0, -1e-9) == "00:40:00.000 +00:00:00.00 = 10.000000 +0.000000 deg (ICRS)"
 
 
 @pytest.mark.parametrize("text", ["2711.4", "-5 s", "0 s", "nan s", "5 parsec", ""])
@@ -133,7 +148,8 @@ def test_ellipses_and_what_is_refused() -> None:
     assert parse_error("1.8", "1 sigma") == (1.8, 1.8, 0.0)
     assert parse_error("1.8,1.2,200", "1 sigma") == (1.8, 1.2, 20.0)
     for text, level in (("1.2,1.8,0", "1 sigma"), ("-1", "1 sigma"), ("nan", "1 sigma"), ("1,2", "1 sigma"),
-                        ("1", "120%"), ("1", "0%"), ("1", "high"), ("1", "-1 sigma"), ("x", "1 sigma")):  # fmt: skip
+                        ("1", "120%"), ("1", "0%"), ("1", "high"), ("1", "-1 sigma"), ("x", "1 sigma"),
+                        ("1", "1e400 sigma"), ("1_8", "1 sigma"), ("inf", "1 sigma"), ("1,1,nan", "1 sigma")):  # fmt: skip
         with pytest.raises(InputError):
             parse_error(text, level)
     assert np.isfinite(sigma_per_axis(1.0, "99.9%"))

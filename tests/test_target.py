@@ -3,8 +3,12 @@
 from __future__ import annotations
 
 from pathlib import Path
+from tempfile import TemporaryDirectory
 
+import numpy as np
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 from xmatch.demo.scene import demo_target
 from xmatch.errors import InputError, TargetError
@@ -78,6 +82,8 @@ def test_round_trip(tmp_path: Path, target: Target) -> None:
         (LEAST + "[spin]\nperiod_s = 10\nmay_be_orbital = 'yes'", "true or false"),
         (LEAST + "[[pulses]]\npeak_jy = 1.0\nwidth_s = 1.0", "pulses.frequency_mhz"),
         (LEAST + "[[pulses]]\nfrequency_mhz = 100\npeak_jy = true\nwidth_s = 1.0", "finite number"),
+        (LEAST + "[pulses]\nfrequency_mhz = 100\npeak_jy = 1.0\nwidth_s = 1.0", "[[pulses]]"),
+        (LEAST + "[dispersion]\ndm_pc_cm3 = 1" + "0" * 400, "finite number"),
         ("[position\n", "not readable as TOML"),
     ],
 )
@@ -87,6 +93,22 @@ def test_a_fault_names_the_file_and_what_is_allowed(tmp_path: Path, text: str, s
         read_target(path)
     assert str(path) in str(caught.value)
     assert says in str(caught.value)
+
+
+def test_names_and_numbers_that_toml_cannot_take_as_they_are(tmp_path: Path) -> None:
+    target = Target("a\x7fb\x1b", Position(np.float64(10.5), np.float64(-20.25), np.float64(2.0), 1.0))
+    back = read_target(written(tmp_path, write_target(target)))
+    assert back.name == target.name
+    assert (back.position.ra_deg, back.position.dec_deg, back.position.sigma_major_arcsec) == (10.5, -20.25, 2.0)
+
+
+@given(st.floats(1.0e7, 1.0e11), st.floats(1.0e-4, 1.0e3), st.floats(1.0e-3, 1.0e4))
+def test_pulses_come_back(nu_hz: float, peak_jy: float, width_s: float) -> None:
+    target = Target("a", Position(1.0, 2.0, 3.0, 1.0), pulses=(Pulse(nu_hz, peak_jy, width_s),))
+    with TemporaryDirectory() as folder:
+        back = read_target(written(Path(folder), write_target(target))).pulses[0]
+    assert (back.peak_jy, back.width_s) == (peak_jy, width_s)
+    assert back.nu_hz == pytest.approx(nu_hz, rel=4e-16)  # the file holds MHz: two roundings
 
 
 def test_a_missing_file_is_said(tmp_path: Path) -> None:

@@ -18,7 +18,7 @@ from xmatch.constants import LY_CM, PC_CM
 from xmatch.errors import PositionError, TargetError
 from xmatch.match.ellipse import sigma_from_radius
 
-_SIGNS = str.maketrans({"−": "-", "–": "-", "＋": "+", "′": "'", "″": '"'})
+_SIGNS = str.maketrans({"−": "-", "–": "-", "＋": "+", "′": "'", "″": '"', "\u00b5": "u", "\u03bc": "u"})
 _NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
 _COLON = re.compile(r"^([+-]?)(\d{1,3}):(\d{1,2})(?::(\d{1,2}(?:\.\d*)?))?$")
 _HMS = re.compile(r"^([+-]?)(\d{1,2})h(\d{1,2})m(?:(\d{1,2}(?:\.\d*)?)s)?$")
@@ -117,16 +117,18 @@ def format_position(ra_deg: float, dec_deg: float) -> str:
     sign = "-" if math.copysign(1.0, dec_deg) < 0 and dec_cs else "+"
     ra = f"{ra_ms // 3_600_000:02d}:{ra_ms // 60_000 % 60:02d}:{ra_ms % 60_000 / 1e3:06.3f}"
     dec = f"{sign}{dec_cs // 360_000:02d}:{dec_cs // 6_000 % 60:02d}:{dec_cs % 6_000 / 1e2:05.2f}"
-    return f"{ra} {dec} = {round(ra_deg, 6) % 360.0:.6f} {dec_deg:+.6f} deg (ICRS)"
+    # adding 0.0 turns a rounded -0.0 into +0.0, so that both notations carry the same sign
+    return f"{ra} {dec} = {round(ra_deg, 6) % 360.0:.6f} {round(dec_deg, 6) + 0.0:+.6f} deg (ICRS)"
 
 
 # ------------------------------------------------------------------------------------------------
 # errors, distances, times, pulses
 # ------------------------------------------------------------------------------------------------
-_PC = {"pc": 1.0, "kpc": 1.0e3, "mpc": 1.0e6, "ly": LY_CM / PC_CM, "kly": 1.0e3 * LY_CM / PC_CM}
+# Capitals count: MJy and mJy, Mpc and mpc are nine orders of magnitude apart.
+_PC = {"pc": 1.0, "kpc": 1.0e3, "Mpc": 1.0e6, "ly": LY_CM / PC_CM, "kly": 1.0e3 * LY_CM / PC_CM}
 _SECONDS = {"s": 1.0, "ms": 1.0e-3, "min": 60.0, "h": 3600.0, "d": 86400.0}
-_HZ = {"hz": 1.0, "mhz": 1.0e6, "ghz": 1.0e9}
-_JY = {"jy": 1.0, "mjy": 1.0e-3, "ujy": 1.0e-6}
+_HZ = {"Hz": 1.0, "kHz": 1.0e3, "MHz": 1.0e6, "GHz": 1.0e9}
+_JY = {"Jy": 1.0, "mJy": 1.0e-3, "uJy": 1.0e-6}
 _LEVEL = re.compile(rf"^({_NUMBER})\s*(%|sigma)$")
 
 
@@ -138,9 +140,12 @@ def _positive(what: str, value: float, unit: str = "") -> float:
 
 def _with_unit(what: str, text: str, units: dict[str, float], example: str) -> float:
     match = re.match(rf"^\s*({_NUMBER}|nan|inf)\s*([A-Za-z]+)\s*$", text.translate(_SIGNS))
-    if match is None or match[2].lower() not in units:
-        raise TargetError(f"{what} {text!r} is not understood; give a number with its unit, such as {example!r}")
-    return _positive(what, float(match[1]) * units[match[2].lower()])
+    if match is None or match[2] not in units:
+        raise TargetError(
+            f"{what} {text.strip()!r} is not understood; give a number with its unit ({', '.join(units)}; capitals "
+            f"count), such as {example!r}"
+        )
+    return _positive(what, float(match[1]) * units[match[2]])
 
 
 def parse_distance(text: str) -> tuple[float, float]:
@@ -153,12 +158,12 @@ def parse_distance(text: str) -> tuple[float, float]:
     """
     clean = text.translate(_SIGNS).replace("±", "+-")
     match = re.match(rf"^\s*({_NUMBER}|nan)\s*(\.\.|\+-)\s*({_NUMBER}|nan)\s*([A-Za-z]+)\s*$", clean)
-    if match is None or match[4].lower() not in _PC:
+    if match is None or match[4] not in _PC:
         raise TargetError(
-            f"distance {text!r} is not understood; give a range with its unit (pc, kpc, Mpc, ly), such as '1.6..4.1 kpc' or "
+            f"distance {text!r} is not understood; give a range with its unit (pc, kpc, Mpc, ly; capitals count), such as '1.6..4.1 kpc' or "
             "'5.0 +- 1.0 kpc'; a single distance would hide how much every luminosity depends on it"
         )
-    unit = _PC[match[4].lower()]
+    unit = _PC[match[4]]
     first, second = float(match[1]), float(match[3])
     low, high = (first, second) if match[2] == ".." else (first - second, first + second)
     return check_distance(low * unit, high * unit)
@@ -218,8 +223,8 @@ def sigma_per_axis(length_arcsec: float, level: str) -> float:
         )
     value = float(match[1])
     if match[2] == "sigma":
-        if not value > 0.0:
-            raise PositionError(f"error level {level!r} is not allowed; the number of sigma must be above 0")
+        if not (math.isfinite(value) and value > 0.0):
+            raise PositionError(f"error level {level!r} is not allowed; the number of sigma must be finite and above 0")
         return length_arcsec / value
     if not 0.0 < value < 100.0:
         raise PositionError(f"error level {level!r} is not allowed; a fraction lies between 0% and 100%")
@@ -228,11 +233,9 @@ def sigma_per_axis(length_arcsec: float, level: str) -> float:
 
 def parse_error(text: str, level: str) -> tuple[float, float, float]:
     """Read ``1.8`` or ``1.8,1.2,20`` (arcsec, arcsec, degrees east of north): one-sigma semi-axes and angle."""
-    parts = text.translate(_SIGNS).split(",")
-    try:
-        values = [float(part) for part in parts]
-    except ValueError:
-        values = []
+    parts = [part.strip() for part in text.translate(_SIGNS).split(",")]
+    # float() alone would read 1_8 as eighteen
+    values = [float(part) for part in parts] if all(re.fullmatch(_NUMBER, part) for part in parts) else []
     if len(values) not in (1, 3):
         raise PositionError(
             f"position error {text!r} is not understood; give a radius, or 'major,minor,angle' in arcsec and degrees"

@@ -146,40 +146,43 @@ def build_target(
 
 
 def write_target(target: Target) -> str:
-    """Write a target as a file that :func:`read_target` reads back to the same numbers."""
+    """Write a target as a file that :func:`read_target` reads back to the same numbers.
+
+    Only the frequency of a pulse may differ, in its last binary digit: the file gives it in MHz.
+    """
     p = target.position
     lines = ["[target]", f"name = {_toml(target.name)}"]
     if target.note:
         lines.append(f"note = {_toml(target.note)}")
     lines += [
-        "", "[position]", f"ra_deg = {p.ra_deg!r}", f"dec_deg = {p.dec_deg!r}",
-        f"error_major_arcsec = {p.sigma_major_arcsec!r}", f"error_minor_arcsec = {p.sigma_minor_arcsec!r}",
-        f"error_angle_deg = {p.angle_deg!r}", 'error_level = "1 sigma"',
+        "", "[position]", f"ra_deg = {_digits(p.ra_deg)}", f"dec_deg = {_digits(p.dec_deg)}",
+        f"error_major_arcsec = {_digits(p.sigma_major_arcsec)}", f"error_minor_arcsec = {_digits(p.sigma_minor_arcsec)}",
+        f"error_angle_deg = {_digits(p.angle_deg)}", 'error_level = "1 sigma"',
     ]  # fmt: skip
     if p.epoch_yr is not None:
-        lines.append(f"epoch = {p.epoch_yr!r}")
+        lines.append(f"epoch = {_digits(p.epoch_yr)}")
     if target.distance is not None:
         d = target.distance
         lines += [
             "",
             "[distance]",
-            f'low = "{d.low_pc!r} pc"',
-            f'high = "{d.high_pc!r} pc"',
+            f'low = "{_digits(d.low_pc)} pc"',
+            f'high = "{_digits(d.high_pc)} pc"',
             f"origin = {_toml(d.origin)}",
         ]
     if target.dm_pc_cm3 is not None:
-        lines += ["", "[dispersion]", f"dm_pc_cm3 = {target.dm_pc_cm3!r}"]
+        lines += ["", "[dispersion]", f"dm_pc_cm3 = {_digits(target.dm_pc_cm3)}"]
     if target.column_cm2 is not None or target.av_mag is not None:
         lines += ["", "[absorption]"]
         for key in ("column_cm2", "column_origin", "av_mag", "av_origin"):
             value = getattr(target, key)
             if value not in (None, ""):
-                lines.append(f"{key} = {_toml(value) if isinstance(value, str) else repr(value)}")
+                lines.append(f"{key} = {_toml(value) if isinstance(value, str) else _digits(value)}")
     if target.spin is not None:
         s = target.spin
-        lines += ["", "[spin]", f"period_s = {s.period_s!r}"]
+        lines += ["", "[spin]", f"period_s = {_digits(s.period_s)}"]
         lines += [
-            f"{key} = {value!r}"
+            f"{key} = {_digits(value)}"
             for key, value in (("derivative", s.derivative), ("derivative_limit", s.derivative_limit))
             if value is not None
         ]
@@ -188,16 +191,21 @@ def write_target(target: Target) -> str:
         lines += [
             "",
             "[[pulses]]",
-            f"frequency_mhz = {pulse.nu_hz / 1e6!r}",
-            f"peak_jy = {pulse.peak_jy!r}",
-            f"width_s = {pulse.width_s!r}",
+            f"frequency_mhz = {_digits(pulse.nu_hz / 1e6)}",
+            f"peak_jy = {_digits(pulse.peak_jy)}",
+            f"width_s = {_digits(pulse.width_s)}",
         ]
     return "\n".join(lines) + "\n"
 
 
 def _toml(text: str) -> str:
-    # JSON's escapes are a subset of those of a TOML basic string
-    return json.dumps(text, ensure_ascii=False)
+    # JSON's escapes are a subset of those of a TOML basic string; TOML alone forbids a bare DEL
+    return json.dumps(text, ensure_ascii=False).replace("\x7f", "\\u007f")
+
+
+def _digits(value: float) -> str:
+    """All digits of a number; numpy writes its own type into ``repr``, which no TOML reader takes."""
+    return repr(float(value))
 
 
 def _from_sections(content: dict[str, Any], stem: str) -> Target:
@@ -206,7 +214,9 @@ def _from_sections(content: dict[str, Any], stem: str) -> Target:
             raise TargetError(
                 f"section [{section}] is not known{_near(section, SECTIONS)}; there are {', '.join(SECTIONS)}"
             )
-        for entry in value if section == "pulses" and isinstance(value, list) else [value]:
+        if section == "pulses" and not isinstance(value, list):
+            raise TargetError("pulses must be a list; write [[pulses]] in double brackets above each pulse")
+        for entry in value if section == "pulses" else [value]:
             if not isinstance(entry, dict):
                 raise TargetError(f"{section} = {entry!r} is not allowed; write it as a section with keys")
             for key in entry:
@@ -323,9 +333,16 @@ def _number(section: str, content: dict[str, Any], key: str) -> float | None:
     if key not in content:
         return None
     value = content[key]
-    if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
-        raise TargetError(f"{section}.{key} = {value!r} is not allowed; a finite number is needed")
-    return float(value)
+    fault = TargetError(f"{section}.{key} = {str(value)[:40]!r} is not allowed; a finite number is needed")
+    if isinstance(value, bool) or not isinstance(value, int | float):
+        raise fault
+    try:
+        number = float(value)
+    except OverflowError:  # TOML integers have no upper end
+        raise fault from None
+    if not math.isfinite(number):
+        raise fault
+    return number
 
 
 def _text(section: str, content: dict[str, Any], key: str) -> str:

@@ -27,7 +27,7 @@ def command(catalog_id: str | None, catalog_folder: tuple[str, ...], as_json: bo
     else:
         raise FactError(f"no catalog {catalog_id!r} in the registry; there are {', '.join(registry)}")
     if as_json:
-        click.echo(json.dumps([catalog_dict(catalog) for catalog in chosen], indent=2, ensure_ascii=False))
+        click.echo(json.dumps([catalog_dict(catalog) for catalog in chosen], indent=2))
     else:
         for line in list_lines(chosen) if catalog_id is None else show_lines(chosen[0]):
             click.echo(line)

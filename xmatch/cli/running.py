@@ -113,7 +113,7 @@ def print_answer(answer: Look, out: Console, as_json: bool) -> None:
     if as_json:
         from xmatch.report.asjson import to_json
 
-        json.dump(to_json(answer), sys.stdout, indent=2, ensure_ascii=False, allow_nan=False)
+        json.dump(to_json(answer), sys.stdout, indent=2, allow_nan=False)
         sys.stdout.write("\n")
         return
     from xmatch.report.terminal import render

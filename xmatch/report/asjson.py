@@ -7,6 +7,8 @@ import math
 from collections.abc import Mapping
 from enum import Enum
 
+import numpy as np
+
 from xmatch.records import Look, Outcome
 from xmatch.report.words import answer, gone
 
@@ -37,6 +39,8 @@ def to_json(look: Look) -> dict[str, object]:
 
 def plain(value: object) -> object:
     """Turn records into dictionaries, lists, texts and finite numbers."""
+    if isinstance(value, np.generic | np.ndarray):
+        return plain(value.tolist())  # numpy's own types are no JSON
     if isinstance(value, Enum):
         return str(value)
     if dataclasses.is_dataclass(value) and not isinstance(value, type):

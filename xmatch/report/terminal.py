@@ -6,8 +6,10 @@ same words.
 
 from __future__ import annotations
 
+import math
+import re
 import textwrap
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from typing import TYPE_CHECKING
 
 from xmatch.position import format_position
@@ -26,8 +28,9 @@ STYLE = {
     StandingWord.RULED_OUT: "bold",
     StandingWord.FAVOURED: "bold",
 }
-WIDE = 104
-"""Width from which the limits stand in one table."""
+HEADINGS = ("band", "limit", "observed <", "through", "corrected <", "luminosity <")
+_TIED = re.compile(r"(?<=[<>]) (?=\S)|(?<=\d) (?=\.\. )|(?<= \.\.) (?=\d)")
+"""Spaces in ``< 3.1e-13`` and ``1.2e31 .. 5.0e31``: a sign stays with its number, a range on one line."""
 SHOWN_CANDIDATES = 5
 ASSUMED = (
     ("confidence", "confidence of limits", ""),
@@ -95,10 +98,10 @@ def _wrap(
         indent = first[: len(first) - len(first.lstrip())]
         text, first = f"{first.strip()} {text}", indent
         rest = indent + "    " if len(rest) > 0.6 * width else rest
-    for line in textwrap.wrap(
-        clean(text), width, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False
-    ) or [first]:
-        yield line, style
+    text, first = _TIED.sub("\u00a0", clean(text)), clean(first)
+    wrapped = textwrap.wrap(text, width, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False)
+    for line in wrapped or [first]:
+        yield line.replace("\u00a0", " "), style
 
 
 def _section(title: str, width: int) -> Iterator[tuple[str, str]]:
@@ -175,32 +178,60 @@ def _limits(look: Look, width: int) -> Iterator[tuple[str, str]]:
         f"Fluxes in erg/s/cm^2 (X-rays: in the band; others: nu F_nu), luminosities in erg/s, isotropic. {where}.",
         width,
     )
-    if width >= WIDE:
-        yield (
-            f"  {'band':<26} {'limit':>22} {'observed <':>11} {'through':>8} {'corrected <':>12}  luminosity <",
-            "underline",
-        )
-        for p in look.limits:
-            yield _limit_row(p)[:width], ""
+    table = _table(look.limits)
+    if max(len(row) for row in table) <= width:
+        yield table[0], "underline"
+        yield from ((row, "") for row in table[1:])
     else:
         for p in look.limits:
-            yield from _wrap(
-                f"{p.limit.band.label}: flux < {number(p.flux_cgs)}, {number(p.transmitted)} gets through, corrected < "
-                f"{number(p.corrected_flux_cgs)}, luminosity < {span(p.luminosity_erg_s)}", width, "  ", " " * 6,
-            )  # fmt: skip
+            yield from _wrap(_in_a_sentence(p), width, f" {_mark(p)}", " " * 6)
     yield from _wrap("These rest on:", width)
     for label, note in _notes(look.limits):
         yield from _wrap(f"{label}: {note}", width, "  ", " " * 6)
 
 
-def _limit_row(p: PhysicalLimit) -> str:
+def _table(limits: Sequence[PhysicalLimit]) -> list[str]:
+    """Heading and rows, each column as wide as what stands in it: a number is never cut."""
+    cells = [HEADINGS] + [
+        (
+            clean(p.limit.band.label),
+            clean(limit_text(p.limit).partition(" (")[0]),
+            number(p.flux_cgs),
+            number(p.transmitted),
+            _uncorrected(p) or number(p.corrected_flux_cgs),
+            span(p.luminosity_erg_s),
+        )
+        for p in limits
+    ]
+    widths = [max(len(row[i]) for row in cells) for i in range(len(HEADINGS) - 1)]
+    marks = [" ", *(_mark(p) for p in limits)]
+    return [
+        f" {mark}{row[0]:<{widths[0]}}  "
+        + "  ".join(f"{cell:>{size}}" for cell, size in zip(row[1:-1], widths[1:], strict=True))
+        + f"  {row[-1]}"
+        for mark, row in zip(marks, cells, strict=True)
+    ]
+
+
+def _in_a_sentence(p: PhysicalLimit) -> str:
+    """One limit where the table does not fit."""
+    luminosity = f", luminosity < {span(p.luminosity_erg_s)}" if p.luminosity_erg_s else ""
     value = limit_text(p.limit).partition(" (")[0]
-    mark = "*" if p.limit.flag or not p.limit.verified_depth else " "
-    corrected = number(p.corrected_flux_cgs) if p.corrected_flux_cgs is not None else "blind"
-    return clean(
-        f" {mark}{p.limit.band.label:<26} {value:>22} {number(p.flux_cgs):>11} {number(p.transmitted):>8} {corrected:>12}  "
-        f"{span(p.luminosity_erg_s)}"
-    )
+    why = _uncorrected(p)
+    corrected = f"corrected: {why}" if why else f"corrected < {number(p.corrected_flux_cgs)}"
+    through = "an unknown part" if math.isnan(p.transmitted) else number(p.transmitted)
+    return f"{p.limit.band.label} {value}: observed < {number(p.flux_cgs)}, {through} gets through, {corrected}{luminosity}"
+
+
+def _uncorrected(p: PhysicalLimit) -> str:
+    """Why there is no corrected flux; empty when there is one."""
+    if p.corrected_flux_cgs is not None:
+        return ""
+    return "unknown" if math.isnan(p.transmitted) else "blind"
+
+
+def _mark(p: PhysicalLimit) -> str:
+    return "*" if p.limit.flag or not p.limit.verified_depth else " "
 
 
 def _notes(limits: Iterable[PhysicalLimit]) -> Iterator[tuple[str, str]]:
@@ -210,7 +241,7 @@ def _notes(limits: Iterable[PhysicalLimit]) -> Iterator[tuple[str, str]]:
         by_note.setdefault(p.note, []).append(p.limit.band.label)
     for note, labels in by_note.items():
         yield ", ".join(labels), note
-    if any(p.limit.flag or not p.limit.verified_depth for p in limits):
+    if any(_mark(p) == "*" for p in limits):
         yield "*", "flagged or unverified, see the catalog above"
 
 

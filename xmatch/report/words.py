@@ -9,6 +9,8 @@ from collections.abc import Iterable, Sequence
 from xmatch.records import Finding, LimitKind, Look, Outcome, Quantity, StandingWord, Waveband
 from xmatch.records import Limit as LimitRecord
 
+_BREAKS = "\n\t\x0b\x0c\x85\u2028\u2029"
+"""What a terminal or a reader of lines may take for the end of a line."""
 FAILED = (Outcome.UNANSWERED, Outcome.MISREAD, Outcome.TRUNCATED)
 
 
@@ -24,6 +26,9 @@ def answer(look: Look) -> str:
         parts.append(
             f"{'a possible counterpart' if not parts else 'also a possible one'} in {_names(by[Outcome.AMBIGUOUS])}"
         )
+    if not parts and len(failed) + len(by[Outcome.NOT_COVERED]) == n:
+        # silence of the archives must not read like a blank sky
+        parts.append(f"nothing was learnt about this position{'' if n else ': no catalog was asked'}")
     if not parts:
         whole = "nothing that can be called a counterpart"
         parts.append(f"{whole} in what did answer" if failed else whole)
@@ -42,7 +47,7 @@ def answer(look: Look) -> str:
         )
     if by[Outcome.PARTLY_COVERED]:
         details.append(
-            f"{len(by[Outcome.PARTLY_COVERED])} cover only part of the error region ({_wavebands(by[Outcome.PARTLY_COVERED])})"
+            f"{_count(len(by[Outcome.PARTLY_COVERED]), 'covers', 'cover')} only part of the error region ({_wavebands(by[Outcome.PARTLY_COVERED])})"
         )
     if by[Outcome.NOT_COVERED]:
         details.append(f"{len(by[Outcome.NOT_COVERED])} never looked here ({_names(by[Outcome.NOT_COVERED])})")
@@ -52,7 +57,7 @@ def answer(look: Look) -> str:
         details.append(f"no known object at the position ({_names(lists)}, which proves nothing)")
     if by[Outcome.COVERAGE_UNKNOWN]:
         details.append(
-            f"{len(by[Outcome.COVERAGE_UNKNOWN])} cannot prove that it looked ({_names(by[Outcome.COVERAGE_UNKNOWN])})"
+            f"{_count(len(by[Outcome.COVERAGE_UNKNOWN]), 'cannot prove that it', 'cannot prove that they')} looked ({_names(by[Outcome.COVERAGE_UNKNOWN])})"
         )
     text = (
         f"{look.target.name}: {' and '.join(parts)}. {'; '.join(details)}."
@@ -94,18 +99,19 @@ def _wavebands(findings: Iterable[Finding]) -> str:
 
 
 def clean(text: str) -> str:
-    """Text without control characters: names from archives may hold anything."""
-    return "".join(" " if c in "\n\t" else c for c in text if unicodedata.category(c)[0] != "C" or c in "\n\t")
+    """Text on one line and without control characters: names from archives may hold anything."""
+    return "".join(" " if c in _BREAKS else c for c in text if unicodedata.category(c)[0] != "C" or c in _BREAKS)
 
 
 def number(value: float | None, digits: int = 2) -> str:
     """A number with a few significant digits; powers of ten outside 0.001 to 100000; a dash when there is none."""
     if value is None or not math.isfinite(value):
         return "-"
-    if value != 0.0 and not 1.0e-3 <= abs(value) < 1.0e5:
-        return f"{value:.{digits - 1}e}".replace("e-0", "e-").replace("e+0", "e").replace("e+", "e")
-    text = f"{value:.{max(0, digits - 1 - math.floor(math.log10(abs(value))))}f}" if value else "0"
-    return text
+    if value == 0.0:
+        return "0"
+    mantissa, _, exponent = f"{value:.{digits - 1}e}".partition("e")
+    power = int(exponent)  # of the rounded value: 9.96 is written 10, not 10.0
+    return f"{value:.{max(0, digits - 1 - power)}f}" if -3 <= power < 5 else f"{mantissa}e{power}"
 
 
 def limit_text(limit: LimitRecord) -> str:
@@ -116,11 +122,16 @@ def limit_text(limit: LimitRecord) -> str:
     else:
         value = f"< {number(limit.value, 3)} {band.unit}"
     meaning = {
-        LimitKind.COMPLETENESS: f"{limit.confidence:.0%} of such sources are listed",
-        LimitKind.BOUND: f"bound at {limit.confidence:.0%}, one-sided",
-        LimitKind.DETECTION: f"found with probability {limit.confidence:.0%}",
+        LimitKind.COMPLETENESS: f"{share(limit.confidence)} of such sources are listed",
+        LimitKind.BOUND: f"bound at {share(limit.confidence)}, one-sided",
+        LimitKind.DETECTION: f"found with probability {share(limit.confidence)}",
     }[limit.kind]
     return f"{value} ({meaning})"
+
+
+def share(fraction: float) -> str:
+    """A confidence in per cent with the digits it has: 0.9973 is 99.73%, never 100%."""
+    return f"{100.0 * fraction:.6g}%"
 
 
 def age(seconds: float | None) -> str:
@@ -140,7 +151,7 @@ def percent(value: float | None, draws: int) -> str:
     floor = 3.0 / draws
     if value <= floor * (1.0 + 1.0e-9):
         return f"< {floor:.0e}".replace("e-0", "e-")
-    return f"{value:.2g}" if value < 0.1 else f"{value:.2f}"
+    return number(value) if value < 0.1 else f"{value:.2f}"
 
 
 def span(values: Sequence[float]) -> str:
