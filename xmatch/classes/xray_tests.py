@@ -12,11 +12,11 @@ from xmatch.classes.evidence import Applied, Evidence, joint_miss, set_aside, so
 from xmatch.classes.model import Prediction
 from xmatch.classes.rotation_tests import NO_DISTANCE, NO_SPIN, isotropic_log10, say_power
 from xmatch.classes.survival import miss_probability
-from xmatch.constants import KEV_HZ
 from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_fraction, transmitted_fractions
 from xmatch.flux.luminosity import sphere_cm2
+from xmatch.flux.physical import edges_kev
 from xmatch.flux.spectra import Blackbody, PowerLaw
-from xmatch.records import Band, Floats, PhysicalLimit
+from xmatch.records import Floats, PhysicalLimit
 
 TEMPERATURE_NODES = 32
 COLUMN_NODES = 48
@@ -28,11 +28,6 @@ LOWEST_COLUMN_CM2 = 1.0e16
 TINY = 1.0e-300
 BOLOMETRIC = math.pi**4 / 15.0
 """Integral of x^3 / (e^x - 1): what a blackbody's band integral is divided by (definition)."""
-
-
-def edges_kev(band: Band) -> tuple[float, float]:
-    """Edges of a band in keV."""
-    return band.nu_low_hz / KEV_HZ, band.nu_high_hz / KEV_HZ
 
 
 def xray_limits(evidence: Evidence) -> tuple[list[PhysicalLimit], list[PhysicalLimit]]:

@@ -8,14 +8,13 @@ from dataclasses import dataclass
 import numpy as np
 
 from xmatch.assumptions import Assumptions
+from xmatch.constants import ARCSEC2_PER_DEG2
 from xmatch.match.chance import chance_within, crowding_tail, expected_in_ellipse, local_density
 from xmatch.match.ellipse import covariance
 from xmatch.match.motion import motion_sigma_arcsec, move, target_motion_sigma_arcsec
 from xmatch.match.odds import density_at, reliability
 from xmatch.match.separation import normalised, offsets_arcsec, separation_arcsec, tail
 from xmatch.records import Band, Bools, Candidate, Floats, Measured, Outcome, Position, Rows
-
-ARCSEC2_PER_DEG2 = 3600.0**2
 
 
 @dataclass(frozen=True)
