@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from zlib import crc32
 
 import numpy as np
@@ -84,6 +84,8 @@ class Deviates:
 
     quantile: Floats
     column_sigma: Floats
+    worked_out: dict[tuple[str, float], tuple[Floats, Floats, Floats]] = field(default_factory=dict, compare=False)
+    """Lines of sight by distance prior and column factor, so that every class and beam shares them."""
 
     @classmethod
     def drawn(cls, assumptions: Assumptions) -> Deviates:
@@ -111,16 +113,23 @@ def draw(
     The column is log-normal about the assumed one with ``column_scatter_dex`` (He, Ng & Kaspi 2013, ApJ 768, 64), and
     the extinction scales with it: dust and gas come together.
     """
-    n = len(deviates.quantile)
-    factor = variant.column_factor * 10.0 ** (assumptions.column_scatter_dex * deviates.column_sigma)
-    dist = np.empty(0)
-    if distance is not None:
-        dist = distance_quantiles_pc(distance.low_pc, distance.high_pc, variant.prior, deviates.quantile)
+    place = (variant.prior, variant.column_factor)
+    if place not in deviates.worked_out:
+        factor = variant.column_factor * 10.0 ** (assumptions.column_scatter_dex * deviates.column_sigma)
+        dist = np.empty(0)
+        if distance is not None:
+            dist = distance_quantiles_pc(distance.low_pc, distance.high_pc, variant.prior, deviates.quantile)
+        deviates.worked_out[place] = (
+            dist,
+            (assumptions.column_cm2 or 0.0) * factor,
+            (assumptions.av_mag or 0.0) * factor,
+        )
+    dist_pc, column_cm2, av_mag = deviates.worked_out[place]
     return Draws(
-        n=n,
-        dist_pc=dist,
-        column_cm2=(assumptions.column_cm2 or 0.0) * factor,
-        av_mag=(assumptions.av_mag or 0.0) * factor,
+        n=len(deviates.quantile),
+        dist_pc=dist_pc,
+        column_cm2=column_cm2,
+        av_mag=av_mag,
         variant=variant,
         seed=assumptions.seed,
         class_id=class_id,

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -191,8 +192,11 @@ def _variants(item: ClassFile, evidence: Evidence, deviates: Deviates, base: _Un
         a, uses_column=any(kind.uses_column for kind in kinds), uses_beam=any(kind.uses_beam for kind in kinds)
     )
     only = replace(item, predictions=ruling)
-    others = (draw(deviates, evidence.target.distance, a, variant, item.id) for variant in tried[1:])
-    return [base, *(_under(only, evidence, draws) for draws in others)]
+    others = [draw(deviates, evidence.target.distance, a, variant, item.id) for variant in tried[1:]]
+    # each variant has its own generators, so that the order in which they end changes nothing; numpy lets go of the
+    # interpreter inside its loops
+    with ThreadPoolExecutor(max_workers=max(1, len(others))) as pool:
+        return [base, *pool.map(lambda draws: _under(only, evidence, draws), others)]
 
 
 def _under(item: ClassFile, evidence: Evidence, draws: Draws) -> _Under:

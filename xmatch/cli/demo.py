@@ -41,7 +41,7 @@ def command(
 
     The array Tern, its transient Tern-4 and every object around it are made up.
     """  # fmt: skip
-    from xmatch.cli.running import consoles, print_answer, run_look
+    from xmatch.cli.running import print_answer, run_look
     from xmatch.demo.scene import TARGET_FILE, demo_archive, demo_target
     from xmatch.resources import fixture_path
 
@@ -56,10 +56,9 @@ def command(
         if write_target is not None:
             write_target.mkdir(parents=True, exist_ok=True)
             shutil.copy(fixture_path(TARGET_FILE), write_target)
-        out, err = consoles(width)
-        answer = run_look(demo_target(), err, quiet=quiet or as_json, store=store, archives=archive.address)
+            answer = run_look(demo_target(), quiet=quiet or as_json, store=store, archives=archive.address)
         assert answer is not None
-        print_answer(answer, out, as_json)
+        print_answer(answer, width, as_json)
     if not as_json:
         click.echo(
             "Everything above is invented: the array, the source and its sky. Your own target: blankfield target > mine.toml"

@@ -64,15 +64,14 @@ def command(target: str, as_json: bool, quiet: bool, width: int | None, show_req
     The target is a file (see 'blankfield target') or a quoted position: '17:38:01.50 -33:48:57.0' with hours and degrees,
     or '264.50625 -33.81583 deg'.
     """  # fmt: skip
-    from xmatch.cli.running import consoles, print_answer, run_look
+    from xmatch.cli.running import print_answer, run_look
     from xmatch.position import format_position
 
     known = read_or_build(target, options)
     click.echo(f"{known.name}: {format_position(known.position.ra_deg, known.position.dec_deg)}", err=True)
-    out, err = consoles(width)
-    answer = run_look(known, err, quiet=quiet or as_json, show_requests=show_requests, **options)
+    answer = run_look(known, quiet=quiet or as_json, show_requests=show_requests, **options)
     if answer is not None:
-        print_answer(answer, out, as_json)
+        print_answer(answer, width, as_json)
 
 
 def read_or_build(where: str, options: dict[str, Any]) -> Target:

@@ -3,23 +3,24 @@
 from __future__ import annotations
 
 import json
+import shutil
 import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import click
 
 if TYPE_CHECKING:
-    from rich.console import Console
-
     from xmatch.pipeline import Progress
     from xmatch.records import Look, Target
+
+MIN_WIDTH = 60
+"""Narrower than this no table of numbers can be read."""
 
 
 def run_look(
     target: Target,
-    err: Console,
     *,
     quiet: bool = False,
     store: str | None = None,
@@ -57,17 +58,17 @@ def run_look(
             from xmatch.archives.transport import Transport
 
             transport = Transport(contact=contact, addresses=archives)
-        with progress_on(err, quiet) as progress:
+        with progress_on(quiet) as progress:
             return look(target, store=opened, catalogs=chosen, transport=transport, options=options, progress=progress)
 
 
 @contextmanager
-def progress_on(stderr: Console, quiet: bool) -> Iterator[Progress | None]:
+def progress_on(quiet: bool) -> Iterator[Progress | None]:
     """Show what is being asked, on standard error; plain lines when it is not a terminal."""
     if quiet:
         yield None
         return
-    if not stderr.is_terminal:
+    if not sys.stderr.isatty():
 
         def line(catalog_id: str, what: str) -> None:
             if what != "asking":
@@ -75,6 +76,7 @@ def progress_on(stderr: Console, quiet: bool) -> Iterator[Progress | None]:
 
         yield line
         return
+    from rich.console import Console
     from rich.progress import BarColumn, MofNCompleteColumn, TextColumn, TimeElapsedColumn
     from rich.progress import Progress as Bar
 
@@ -86,7 +88,7 @@ def progress_on(stderr: Console, quiet: bool) -> Iterator[Progress | None]:
         TimeElapsedColumn(),
         TextColumn("{task.description}"),
     )
-    with Bar(*columns, console=stderr, transient=True) as bar:
+    with Bar(*columns, console=Console(stderr=True), transient=True) as bar:
         task = bar.add_task("", total=0)
 
         def update(catalog_id: str, what: str) -> None:
@@ -101,21 +103,25 @@ def progress_on(stderr: Console, quiet: bool) -> Iterator[Progress | None]:
         yield update
 
 
-def consoles(width: int | None) -> tuple[Any, Any]:
-    """Return the consoles for the answer (standard output) and for progress (standard error)."""
-    from rich.console import Console
-
-    return Console(width=width, soft_wrap=False), Console(stderr=True)
+def width_of(width: int | None) -> int:
+    """Width of the answer: as asked, that of the terminal, or ``COLUMNS``; 80 where nothing says."""
+    return width or max(MIN_WIDTH, shutil.get_terminal_size().columns)
 
 
-def print_answer(answer: Look, out: Console, as_json: bool) -> None:
-    """Print the answer for people, or as JSON for scripts."""
+def print_answer(answer: Look, width: int | None, as_json: bool) -> None:
+    """Print the answer for people, or as JSON for scripts. A pipe needs no rich, whose import would be felt."""
     if as_json:
         from xmatch.report.asjson import to_json
 
         json.dump(to_json(answer), sys.stdout, indent=2, allow_nan=False)
         sys.stdout.write("\n")
         return
-    from xmatch.report.terminal import render
+    from xmatch.report.terminal import lines, render
 
-    render(answer, out)
+    if not sys.stdout.isatty():
+        for line, _ in lines(answer, width_of(width)):
+            click.echo(line)
+        return
+    from rich.console import Console
+
+    render(answer, Console(width=width))
