@@ -56,7 +56,7 @@ def command(
         if write_target is not None:
             write_target.mkdir(parents=True, exist_ok=True)
             shutil.copy(fixture_path(TARGET_FILE), write_target)
-            answer = run_look(demo_target(), quiet=quiet or as_json, store=store, archives=archive.address)
+        answer = run_look(demo_target(), quiet=quiet or as_json, store=store, archives=archive.address)
         assert answer is not None
         print_answer(answer, width, as_json)
     if not as_json:
