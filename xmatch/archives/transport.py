@@ -305,22 +305,15 @@ class Transport:
         except requests.RequestException as fault:
             if stop.called:
                 raise UnansweredError("called off while it was being answered; ask again") from None
-            if watch.fired:
-                raise UnansweredError(
-                    f"no whole answer within the deadline of {polite.deadline_s:g} s ({got} bytes had come); "
-                    "ask again later or allow more time",
-                    http_status=status,
-                ) from None
+            # at the deadline the socket's own time-out and the watch race: both are the deadline
+            if watch.fired or self.clock() >= until:
+                raise _too_late(polite.deadline_s, got, status) from None
             raise fault_of(fault, got, status, polite.connect_s, polite.read_s) from None
         finally:
             stop.forget(watch)
         # a body that ends with the connection looks whole to the client when the watch cut it
         if watch.fired:
-            raise UnansweredError(
-                f"no whole answer within the deadline of {polite.deadline_s:g} s ({got} bytes had come); "
-                "ask again later or allow more time",
-                http_status=status,
-            )
+            raise _too_late(polite.deadline_s, got, status)
         if received.http_status in BUSY:
             raise busy(received.http_status, received.retry_after_s)
         return received
@@ -335,6 +328,14 @@ class Transport:
             # a redirected form would be sent on as a plain GET, without the question in it
             allow_redirects=request.method == "GET",
         )
+
+
+def _too_late(deadline_s: float, got_bytes: int, http_status: int | None) -> UnansweredError:
+    return UnansweredError(
+        f"no whole answer within the deadline of {deadline_s:g} s ({got_bytes} bytes had come); "
+        "ask again later or allow more time",
+        http_status=http_status,
+    )
 
 
 def _user_agent(contact: str | None) -> str:
