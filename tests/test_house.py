@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 PACKAGE = Path(__file__).parent.parent / "xmatch"
-GROUND = {"errors", "records", "vocabulary", "assumptions", "constants"}
+GROUND = {"errors", "records", "asking", "vocabulary", "assumptions", "constants"}
 PURE = {"match", "limits", "flux", "spin"}
 MAY_IMPORT = {
     **{name: GROUND for name in GROUND},

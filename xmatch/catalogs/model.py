@@ -2,11 +2,19 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 from enum import StrEnum
 
 from xmatch.limits.coverage import Region
 from xmatch.records import Band, Question, WantedColumn, Waveband
+
+LOG_TABLE = "observation log"
+"""Name of the table that holds a mission's pointings, in every catalog that has one."""
+BY_UCD = "ucd:"
+"""Begins the stand-in for a column whose name is not confirmed: what follows is its UCD (IVOA)."""
+LONGEST_EXPOSURE_S = 1.0e7
+"""No single pointing is longer (our choice: four months)."""
 
 
 class ErrorMeaning(StrEnum):
@@ -40,7 +48,7 @@ class ErrorColumns:
     columns: tuple[str, ...]
     correlation: str | None
     level: float | None
-    """Containment of a radius."""
+    """Fraction that a radius or an ellipse holds; None for an ellipse of one sigma."""
     floor_arcsec: float
     """Systematic one-sigma error per axis, added in quadrature."""
     source: str
@@ -110,6 +118,38 @@ class Table:
     remote_table: str
     holds: Region | None
     source: str
+    geometry: str = "circle"
+    """``circle`` where a TAP service knows ADQL geometry, ``box`` where plain comparisons must do."""
+    mode: str = "sync"
+    """``sync`` or ``async``, for TAP."""
+    format: str = "votable"
+    """``csv``, ``fits``, ``votable`` or ``ecsv``, for a file."""
+
+
+@dataclass(frozen=True)
+class PointingLog:
+    """The observation log of a mission that points: where it looked, how long, and how far its field reaches."""
+
+    table: Table
+    key: str
+    ra: str
+    dec: str
+    exposure: str
+    start: str | None
+    instrument: str | None
+    field_radius_arcmin: float
+    units: Mapping[str, str]
+    source: str
+
+
+@dataclass(frozen=True)
+class Control:
+    """A cone that is known to hold rows."""
+
+    ra_deg: float
+    dec_deg: float
+    radius_arcsec: float
+    source: str
 
 
 @dataclass(frozen=True)
@@ -144,11 +184,32 @@ class Catalog:
     fingerprint: str
     """SHA-256 of the file's bytes."""
     path: str
+    log: PointingLog | None = None
+    """Observation log, for pointed coverage."""
+    state: str = ""
+    """``needs check`` where the file's author could not confirm the columns."""
+    mirror: bool = False
+    """A small list that is fetched whole and searched in the store."""
+    sexagesimal: bool = False
+    """Whether the position columns are text, hours and degrees."""
+    units: Mapping[str, str] = field(default_factory=dict)
+    """Units of columns that the service serves without one (CSV files, old tables)."""
+    control: Control | None = None
 
     @property
     def band_list(self) -> tuple[Band, ...]:
         """The bands in file order."""
         return tuple(columns.band for columns in self.bands)
+
+    @property
+    def unresolved(self) -> tuple[str, ...]:
+        """Columns whose name is not known yet, only their UCD: a check finds out."""
+        return tuple(column.name for column in self.wanted_columns() if column.name.startswith(BY_UCD))
+
+    @property
+    def needs_check(self) -> bool:
+        """Whether nobody has confirmed its columns: it is asked only after a successful check."""
+        return bool(self.state) or bool(self.unresolved)
 
     @property
     def is_object_list(self) -> bool:
@@ -169,8 +230,12 @@ class Catalog:
                 wanted[name] = WantedColumn(name, **facts)  # type: ignore[arg-type]
 
         want(self.key)
-        want(self.ra, unit="deg", low=0.0, high=360.0)
-        want(self.dec, unit="deg", low=-90.0, high=90.0)
+        if self.sexagesimal:
+            want(self.ra)
+            want(self.dec)
+        else:
+            want(self.ra, unit="deg", low=0.0, high=360.0)
+            want(self.dec, unit="deg", low=-90.0, high=90.0)
         for name in self.error.columns:
             want(name)
         want(self.error.correlation)
@@ -201,4 +266,36 @@ class Catalog:
             radius_arcsec=radius_arcsec,
             columns=self.wanted_columns(),
             row_limit=self.row_limit,
+            geometry=table.geometry,
+            mode=table.mode,
+            format=table.format,
+            units=self.units,
+        )
+
+    def log_question(self, ra_deg: float, dec_deg: float, radius_arcsec: float) -> Question:
+        """Return the cone to put to the observation log: every pointing whose field may reach the position."""
+        log = self.log
+        assert log is not None
+        columns = [
+            WantedColumn(log.key),
+            WantedColumn(log.ra, unit="deg", low=0.0, high=360.0),
+            WantedColumn(log.dec, unit="deg", low=-90.0, high=90.0),
+            WantedColumn(log.exposure, unit="s", low=0.0, high=LONGEST_EXPOSURE_S),
+            *[WantedColumn(name) for name in (log.start, log.instrument) if name is not None],
+        ]
+        return Question(
+            catalog_id=self.id,
+            release=self.release,
+            table=LOG_TABLE,
+            protocol=log.table.protocol,
+            address=log.table.address,
+            remote_table=log.table.remote_table,
+            ra_deg=ra_deg,
+            dec_deg=dec_deg,
+            radius_arcsec=radius_arcsec + 60.0 * log.field_radius_arcmin,
+            columns=tuple(columns),
+            row_limit=self.row_limit,
+            geometry=log.table.geometry,
+            mode=log.table.mode,
+            units=log.units,
         )

@@ -46,6 +46,14 @@ class DemoTable:
     cone_path: str = ""
     """Path of its cone search at that host; none when empty."""
     description: str = ""
+    tap_path: str = ""
+    """Path of the TAP service that has it; none when empty."""
+    tap_table: str = ""
+    """Its name there."""
+    file_path: str = ""
+    """Path at which the whole table is a file; none when empty."""
+    file_format: str = "csv"
+    """``csv``, ``fits``, ``votable`` or ``ecsv``."""
 
     @property
     def ra_deg(self) -> Floats:
@@ -61,8 +69,8 @@ class DemoTable:
 def load_table(path: Path | str) -> DemoTable:
     """Read a table from an ECSV file.
 
-    The file's metadata holds ``remote_table``, ``ra`` and ``dec``, and may hold ``host``, ``cone_path`` and
-    ``description``. A column's unit, or ``unit`` in its metadata where astropy would not parse it, is served as
+    The file's metadata holds ``remote_table``, ``ra`` and ``dec``, and may hold ``host``, ``cone_path``, ``tap_path`` with
+    ``tap_table``, ``file_path`` with ``file_format``, and ``description``. A column's unit, or ``unit`` in its metadata where astropy would not parse it, is served as
     written; ``ucd`` may stand there too. Columns that begin with an underscore are not served.
 
     Raises
@@ -94,6 +102,10 @@ def load_table(path: Path | str) -> DemoTable:
         host=meta.get("host", VIZIER_HOST),
         cone_path=meta.get("cone_path", ""),
         description=meta.get("description", ""),
+        tap_path=meta.get("tap_path", ""),
+        tap_table=meta.get("tap_table", ""),
+        file_path=meta.get("file_path", ""),
+        file_format=meta.get("file_format", "csv"),
     )
 
 

@@ -32,7 +32,8 @@ class Region:
     Attributes
     ----------
     kind : str
-        ``all sky``, ``declination``, ``galactic box`` or ``compilation`` (whose absence proves nothing).
+        ``all sky``, ``declination``, ``galactic box``, ``footprint`` (a MOC that must be fetched first),
+        ``pointed`` (an observation log must be asked) or ``compilation`` (whose absence proves nothing).
     dec_deg, l_deg, b_deg : tuple of float or None
         Inclusive bounds in degrees; an ``l`` interval may wrap through 0.
     """
@@ -43,6 +44,8 @@ class Region:
     b_deg: tuple[float, float] | None = None
     outside: bool = False
     source: str = ""
+    moc: str = ""
+    """Address of the footprint."""
 
     def contains(self, ra_deg: ArrayLike, dec_deg: ArrayLike) -> Bools:
         """Whether positions (degrees) lie inside."""
