@@ -9,7 +9,7 @@ sigma *per axis*, position angles run east of north. ``nan`` means "not measured
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields
 
 import numpy as np
 from numpy.typing import NDArray
@@ -209,6 +209,38 @@ class Rows:
     flux: Mapping[str, Photometry] = field(default_factory=dict)
     raw: tuple[Mapping[str, object], ...] = ()
     """The rows as served, for the store; empty when read back for a warm answer."""
+
+    def __len__(self) -> int:
+        return len(self.key)
+
+    def chosen(self, keep: Bools) -> Rows:
+        """The rows where ``keep`` is true, in order."""
+        return Rows(
+            key=tuple(key for key, kept in zip(self.key, keep, strict=True) if kept),
+            **{name: getattr(self, name)[keep] for name in _ROW_ARRAYS},
+            flux={
+                name: Photometry(one.value[keep], one.error[keep], one.is_limit[keep])
+                for name, one in self.flux.items()
+            },
+            raw=tuple(row for row, kept in zip(self.raw, keep, strict=True) if kept) if self.raw else (),
+        )
+
+
+_ROW_ARRAYS = tuple(f.name for f in fields(Rows) if f.name not in ("key", "flux", "raw"))
+
+
+@dataclass(frozen=True)
+class Pointings:
+    """Where a mission looked: one entry per pointing, arrays of one length."""
+
+    key: tuple[str, ...]
+    ra_deg: Floats
+    dec_deg: Floats
+    exposure_s: Floats
+    field_radius_arcmin: Floats
+    """How far from its axis the field reaches."""
+    start: tuple[str, ...]
+    instrument: tuple[str, ...]
 
     def __len__(self) -> int:
         return len(self.key)

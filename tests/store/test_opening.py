@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import shutil
 import sqlite3
+from contextlib import closing
 from pathlib import Path
 from typing import Any
 
@@ -12,6 +13,8 @@ import pytest
 from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
 from xmatch.store import opening
 from xmatch.store.opening import locate, network_file_system, statements
+from xmatch.store.schema import SCHEMA_VERSION
+from xmatch.store.schema_lists import ADDED_IN_2
 from xmatch.store.store import open_store
 
 
@@ -118,12 +121,41 @@ def test_the_database_of_another_program_is_left_alone(path: Path) -> None:
 def test_a_store_of_another_version_is_left_alone(path: Path, read_only: bool) -> None:
     open_store(path).close()
     other = sqlite3.connect(path)
-    other.execute("PRAGMA user_version = 2")
+    other.execute("PRAGMA user_version = 99")
     other.close()
     before = path.read_bytes()
-    with pytest.raises(StoreVersionError, match=r"schema version 2, .* 1"):
+    with pytest.raises(StoreVersionError, match=rf"schema version 99, .* {SCHEMA_VERSION}"):
         open_store(path, read_only=read_only)
     assert path.read_bytes() == before
+
+
+def as_version_1(path: Path) -> None:
+    """Make a file what version 1 wrote: version 2 only added tables."""
+    other = sqlite3.connect(path)
+    for table in reversed(ADDED_IN_2):
+        other.execute(f"DROP TABLE {table.name}")
+    other.execute("PRAGMA user_version = 1")
+    other.commit()
+    other.close()
+
+
+def test_a_store_of_version_1_is_brought_up_to_date_and_loses_nothing(path: Path, scene: Any, build: Any) -> None:
+    scene.store.put_search(scene.run_id, scene.target_id, build.reply(50), build.rows(50))
+    scene.store.close()
+    as_version_1(path)
+    with pytest.raises(StoreVersionError, match="open it once for writing"):
+        open_store(path, read_only=True)
+    with open_store(path) as store:
+        assert (store.status()["rows"], store.status()["schema_version"]) == (50, SCHEMA_VERSION)
+        assert store.latest_checks() == {}
+    fresh = path.with_name("fresh.sqlite")
+    open_store(fresh).close()
+
+    def made(where: Path) -> set[tuple[str, str]]:
+        with closing(sqlite3.connect(where)) as raw:
+            return set(raw.execute("SELECT name, sql FROM sqlite_master WHERE name NOT LIKE 'sqlite_%'"))
+
+    assert made(path) == made(fresh)
 
 
 def test_a_damaged_store_says_so(path: Path, scene: Any, build: Any) -> None:

@@ -14,6 +14,7 @@ from xmatch.archives.structure import FieldHead, Skeleton, TableHead
 from xmatch.archives.words import plain
 from xmatch.errors import MisreadError
 from xmatch.records import Bools, Column, Floats, Question, WantedColumn
+from xmatch.units import unit_factor
 
 IMPLAUSIBLE_FRACTION = 0.05
 """Fraction of values outside their plausible range from which a column is not believed (our choice)."""
@@ -26,8 +27,6 @@ _CLIPPED, _NO_NUMBER = "W51", "W30"
 _QUOTED = re.compile(r"'(.*)'")
 _NO_VALUE = frozenset({"-", "--", "null", "none", "n/a", "...", "nan"})
 """What archives write in number columns where there is no number."""
-_UNIT_FORMATS = (None, "cds", "vounit")
-"""Spellings that archives use, in the order tried; None is astropy's own."""
 
 _DATATYPE = {"U": "char", "i": "long", "u": "long", "f": "double", "b": "boolean"}
 
@@ -163,30 +162,11 @@ def _check_unit(wanted: WantedColumn, served: FieldHead, question: Question) -> 
             f"column {wanted.name!r} comes as text in {unit or 'no unit'}, where numbers in {wanted.unit} are wanted; "
             "the archive changed or the catalog file is wrong"
         )
-    if _factor(unit, wanted.unit) is None:
+    if unit_factor(unit, wanted.unit) is None:
         raise MisreadError(
             f"column {wanted.name!r} comes in {plain(unit, 30) if unit else 'no unit'}, which cannot be converted to "
             f"{wanted.unit}; the archive changed or the catalog file is wrong"
         )
-
-
-def _factor(served: str | None, wanted: str) -> float | None:
-    """What turns the served unit into the wanted one; None when nothing does."""
-    if served == wanted:
-        return 1.0
-    if served is None:
-        return None
-    import astropy.units as u
-
-    for form in _UNIT_FORMATS:
-        try:
-            unit = u.Unit(served, format=form, parse_strict="silent")
-            # logarithmic units would be taken for a factor, and are none
-            if isinstance(unit, u.UnitBase):
-                return float(unit.to(u.Unit(wanted)))
-        except (ValueError, TypeError, u.UnitsError):
-            continue
-    return None
 
 
 def _values(raw: bytes, skeleton: Skeleton, table: TableHead) -> list[Any]:
@@ -291,7 +271,7 @@ def _present(column: Column, wanted: WantedColumn) -> Floats:
     if column.values.dtype.kind not in "iufb":
         raise MisreadError(f"column {wanted.name!r} holds text where numbers are wanted; check the catalog file")
     values = column.values[~column.missing].astype(np.float64)
-    factor = 1.0 if wanted.unit is None else _factor(column.unit, wanted.unit)
+    factor = 1.0 if wanted.unit is None else unit_factor(column.unit, wanted.unit)
     return values * (1.0 if factor is None else factor)
 
 
@@ -307,7 +287,7 @@ def _check_place(columns: dict[str, Column], question: Question) -> None:
     if not both.any():
         return
     ra_deg, dec_deg = (
-        columns[wanted.name].values[both].astype(np.float64) * (_factor(columns[wanted.name].unit, "deg") or 1.0)
+        columns[wanted.name].values[both].astype(np.float64) * (unit_factor(columns[wanted.name].unit, "deg") or 1.0)
         for wanted in (ra[0], dec[0])
     )
     # a box around the cone holds corners that are cut on this side

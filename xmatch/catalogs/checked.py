@@ -105,6 +105,13 @@ class Checked:
             raise self.fault(f"{where}.{key}", value, f"two numbers from {low:g} to {high:g} are needed")
         return float(value[0]), float(value[1])
 
+    def texts(self, where: str, content: dict[str, Any], key: str) -> tuple[str, ...]:
+        """A list of texts; none where there is no key."""
+        value = content.get(key, [])
+        if not isinstance(value, list) or not all(isinstance(text, str) and text for text in value):
+            raise self.fault(f"{where}.{key}".lstrip("."), value, "a list of texts is needed")
+        return tuple(value)
+
     def words(self, where: str, content: dict[str, Any], key: str) -> dict[str, str]:
         """A table of texts, such as units by column name."""
         value = content.get(key, {})

@@ -42,7 +42,7 @@ ROWS_MOC = "/viz-bin/moc/"
 """Where VizieR serves maps of the rows of its tables."""
 FORMATS = ("csv", "fits", "votable", "ecsv")
 REFRESH = ("frozen", "yearly", "monthly", "rolling")
-COVERAGE_KINDS = ("all sky", "declination", "galactic box", "footprint", "pointed", "compilation")
+COVERAGE_KINDS = ("all sky", "declination", "galactic box", "footprint", "pointed", "unstated", "compilation")
 
 UNITS_OF_QUANTITY = {
     Quantity.MAGNITUDE: ("mag",),
@@ -140,9 +140,9 @@ class _Reader(Checked):
         self.need_source("columns", columns)
         if columns.get("positions", "decimal") not in POSITIONS:
             raise self.fault("columns.positions", columns["positions"], f"one of {', '.join(POSITIONS)} is needed")
-        mirror = top.get("mirror", False)
-        if not isinstance(mirror, bool):
-            raise self.fault("mirror", mirror, "say true for a small list that is fetched whole, or leave it out")
+        mirror = self.section("mirror", top.get("mirror", {}), ("rows_at_least", "source"))
+        if mirror:
+            self.need_source("mirror", mirror)
         if "state" in top and top["state"] != NEEDS_CHECK:
             raise self.fault("state", top["state"], f"the only state is {NEEDS_CHECK!r}; leave it out otherwise")
         neighbourhood = self.section(
@@ -170,7 +170,7 @@ class _Reader(Checked):
             cite=tuple(cite),
             acknowledgement=self.text("", top, "acknowledgement"),
             tables=tables,
-            key=self.text("columns", columns, "key"),
+            key=self.maybe_text("columns", columns, "key"),
             ra=self.text("columns", columns, "ra"),
             dec=self.text("columns", columns, "dec"),
             error=self.error(columns.get("error")),
@@ -181,9 +181,10 @@ class _Reader(Checked):
             coverage=self.region("coverage", top.get("coverage")),
             log=self.log(top.get("coverage")),
             state=str(top.get("state", "")),
-            mirror=mirror,
+            rows_at_least=int(self.number("mirror", mirror, "rows_at_least", low=1)) if mirror else None,
             sexagesimal=columns.get("positions") == "sexagesimal",
             units=self.words("columns", columns, "units"),
+            keep=self.texts("columns", columns, "keep"),
             control=self.control(top["control"]) if "control" in top else None,
             neighbourhood_arcsec=self.number(
                 "neighbourhood", neighbourhood, "radius_arcsec", low=1.0, high=5.0 * 3600.0
@@ -226,7 +227,9 @@ class _Reader(Checked):
         )
 
     def region(self, where: str, content: object) -> Region:
-        region = self.section(where, content, ("kind", "dec_deg", "l_deg", "b_deg", "outside", "moc", "log", "source"))
+        region = self.section(
+            where, content, ("kind", "dec_deg", "l_deg", "b_deg", "outside", "moc", "log", "also", "source")
+        )
         outside = region.get("outside", False)
         if not isinstance(outside, bool):
             raise self.fault(f"{where}.outside", outside, "true or false is needed")
@@ -238,6 +241,7 @@ class _Reader(Checked):
             outside=outside,
             source=self.need_source(where, region),
             moc=self.moc(where, region),
+            also=tuple(self.region(f"{where}.also[{i}]", part) for i, part in enumerate(region.get("also", []))),
         )
 
     def moc(self, where: str, region: dict[str, Any]) -> str:
@@ -414,7 +418,7 @@ class _Reader(Checked):
                 flux_scale_error=self.number(where, band, "flux_scale_error", low=0.0, high=1.0, default=0.0),
                 source=source,
             ),
-            value=self.text(where, band, "value"),
+            value=self.maybe_text(where, band, "value"),
             error=self.maybe_text(where, band, "error"),
             limit_flag=self.limit_flag(f"{where}.limit_flag", band["limit_flag"]) if "limit_flag" in band else None,
             **dict(zip(("low", "high"), self.plausible(where, band), strict=True)),

@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from enum import StrEnum
 
 from xmatch.limits.coverage import Region
-from xmatch.records import Band, Question, WantedColumn, Waveband
+from xmatch.records import WHOLE_SKY_ARCSEC, Band, Question, WantedColumn, Waveband
 
 LOG_TABLE = "observation log"
 """Name of the table that holds a mission's pointings, in every catalog that has one."""
 BY_UCD = "ucd:"
 """Begins the stand-in for a column whose name is not confirmed: what follows is its UCD (IVOA)."""
+LONGEST_LIST = 100_000
+"""A list with more rows is asked by cone, not kept whole (our choice)."""
 LONGEST_EXPOSURE_S = 1.0e7
 """No single pointing is longer (our choice: four months)."""
 
@@ -91,7 +93,8 @@ class BandColumns:
     """Where one band's numbers stand in the table."""
 
     band: Band
-    value: str
+    value: str | None
+    """None where no column is known: the depth still gives a limit, but a row has no flux."""
     error: str | None
     limit_flag: LimitFlag | None
     low: float | None
@@ -164,7 +167,8 @@ class Catalog:
     cite: tuple[str, ...]
     acknowledgement: str
     tables: tuple[Table, ...]
-    key: str
+    key: str | None
+    """Column with the object's name; None where the list has none, and the position stands for it."""
     ra: str
     dec: str
     error: ErrorColumns
@@ -188,13 +192,15 @@ class Catalog:
     """Observation log, for pointed coverage."""
     state: str = ""
     """``needs check`` where the file's author could not confirm the columns."""
-    mirror: bool = False
-    """A small list that is fetched whole and searched in the store."""
+    rows_at_least: int | None = None
+    """For a small list that is fetched whole and searched in the store: rows that it is known to hold."""
     sexagesimal: bool = False
     """Whether the position columns are text, hours and degrees."""
     units: Mapping[str, str] = field(default_factory=dict)
     """Units of columns that the service serves without one (CSV files, old tables)."""
     control: Control | None = None
+    keep: tuple[str, ...] = ()
+    """Further columns that are kept with each row where the archive has them."""
 
     @property
     def band_list(self) -> tuple[Band, ...]:
@@ -210,6 +216,11 @@ class Catalog:
     def needs_check(self) -> bool:
         """Whether nobody has confirmed its columns: it is asked only after a successful check."""
         return bool(self.state) or bool(self.unresolved)
+
+    @property
+    def is_mirrored(self) -> bool:
+        """Whether it is fetched whole and searched in the store."""
+        return self.rows_at_least is not None
 
     @property
     def is_object_list(self) -> bool:
@@ -250,6 +261,8 @@ class Catalog:
                 want(columns.limit_flag.column)
         for rule in self.drop:
             want(rule.column)
+        for extra in self.keep:
+            want(extra, required=False)
         return tuple(wanted.values())
 
     def question(self, table: Table, ra_deg: float, dec_deg: float, radius_arcsec: float) -> Question:
@@ -271,6 +284,11 @@ class Catalog:
             format=table.format,
             units=self.units,
         )
+
+    def whole_question(self, table: Table) -> Question:
+        """Return the question for every row of a list."""
+        whole = self.question(table, 0.0, 0.0, WHOLE_SKY_ARCSEC)
+        return replace(whole, row_limit=LONGEST_LIST, rows_at_least=self.rows_at_least or 0)
 
     def log_question(self, ra_deg: float, dec_deg: float, radius_arcsec: float) -> Question:
         """Return the cone to put to the observation log: every pointing whose field may reach the position."""

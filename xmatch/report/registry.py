@@ -48,7 +48,7 @@ def show_lines(catalog: Catalog) -> Iterable[str]:
         yield f"  table           {table.name}: {table.protocol} {table.address} {table.remote_table} [{table.source}]"
     for columns in catalog.bands:
         band = columns.band
-        yield f"  band            {band.name}: {edges_text(band)}; {band.quantity} in {columns.value} [{band.source}]"
+        yield f"  band            {band.name}: {edges_text(band)}; {band.quantity} in {columns.value or 'no known column'} [{band.source}]"
         if band.system is not None:
             yield f"                  {band.system} magnitudes, {band.zero_point_jy:g} Jy at zero"
         if band.depth is not None:

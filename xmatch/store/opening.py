@@ -16,10 +16,13 @@ from sqlalchemy.exc import ArgumentError, DBAPIError
 from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
 from xmatch.resources import db_path
 from xmatch.store.schema import APPLICATION_ID, SCHEMA_VERSION, metadata, triggers
+from xmatch.store.schema_lists import ADDED_IN_2
 
 ENVIRONMENT = "BLANKFIELD_STORE"
 OLDEST_SQLITE = (3, 37, 0)
 """First SQLite with STRICT tables (sqlite.org/stricttables.html)."""
+UPGRADED = (1,)
+"""Earlier versions that are brought up to date when they are opened for writing."""
 WRITE = "blankfield_write"
 """Execution option of connections that take the write lock when they begin, not when they first write."""
 NETWORK_FILE_SYSTEMS = frozenset(
@@ -131,13 +134,15 @@ def connect(path: Path, *, read_only: bool, wait_s: float) -> tuple[Engine, list
     engine = _engine(path, read_only=read_only, wait_s=wait_s, durable=network is not None)
     try:
         with translated(path):
-            fresh = _is_fresh(engine, path)
+            fresh = _is_fresh(engine, path, read_only)
             if fresh and read_only:
                 raise StoreError(f"{path} is an empty file, not a store yet; run a look first, or give another --store")
             if not read_only:
                 _set_journal(engine, "delete" if network is not None else "wal", wait_s)
                 if fresh:
                     _make(engine, path)
+                else:
+                    _upgrade(engine)
     except BaseException:
         engine.dispose()
         raise
@@ -187,7 +192,7 @@ def _engine(path: Path, *, read_only: bool, wait_s: float, durable: bool) -> Eng
     return engine
 
 
-def _is_fresh(engine: Engine, path: Path) -> bool:
+def _is_fresh(engine: Engine, path: Path, read_only: bool) -> bool:
     """Whether the file holds nothing yet. A file that is neither empty nor ours is refused."""
     with engine.connect() as connection:
         ours = connection.exec_driver_sql("PRAGMA application_id").scalar_one()
@@ -197,7 +202,12 @@ def _is_fresh(engine: Engine, path: Path) -> bool:
         if ours == 0 and version == 0 and things == 0:
             return True
         raise StoreError(f"{path} is an SQLite file but not a store of blankfield; left alone; give another path")
-    if version != SCHEMA_VERSION:
+    if version in UPGRADED and read_only:
+        raise StoreVersionError(
+            f"{path} has schema version {version}, this blankfield reads {SCHEMA_VERSION}; "
+            "open it once for writing (any look does), and it is brought up to date"
+        )
+    if version not in (SCHEMA_VERSION, *UPGRADED):
         raise StoreVersionError(
             f"{path} has schema version {version}, this blankfield reads and writes {SCHEMA_VERSION}; "
             f"use the blankfield that made it, or give another --store; it was left alone"
@@ -229,9 +239,28 @@ def _make(engine: Engine, path: Path) -> None:
         if connection.exec_driver_sql("PRAGMA application_id").scalar_one() == APPLICATION_ID:
             return
         metadata.create_all(connection)
-        for statement in (*triggers(), *statements(db_path("views.sql").read_text(encoding="utf-8"))):
+        for statement in (
+            *triggers(),
+            *triggers(ADDED_IN_2),
+            *statements(db_path("views.sql").read_text(encoding="utf-8")),
+        ):
             connection.exec_driver_sql(statement)
         connection.exec_driver_sql(f"PRAGMA application_id = {APPLICATION_ID}")
+        connection.exec_driver_sql(f"PRAGMA user_version = {SCHEMA_VERSION}")
+
+
+def _upgrade(engine: Engine) -> None:
+    """Add what version 2 added; nothing that a version 1 holds is touched."""
+    with engine.connect() as connection:
+        # without the write lock: a store that is up to date opens while another process writes
+        if connection.exec_driver_sql("PRAGMA user_version").scalar_one() not in UPGRADED:
+            return
+    with engine.execution_options(**{WRITE: True}).begin() as connection:
+        if connection.exec_driver_sql("PRAGMA user_version").scalar_one() not in UPGRADED:
+            return
+        metadata.create_all(connection, tables=list(ADDED_IN_2))
+        for statement in triggers(ADDED_IN_2):
+            connection.exec_driver_sql(statement)
         connection.exec_driver_sql(f"PRAGMA user_version = {SCHEMA_VERSION}")
 
 

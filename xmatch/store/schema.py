@@ -38,7 +38,7 @@ from xmatch.records import (
     Waveband,
 )
 
-SCHEMA_VERSION = 1
+SCHEMA_VERSION = 2
 """Kept in ``PRAGMA user_version``; another one is never opened."""
 APPLICATION_ID = 0x424C4B46
 """``BLKF`` in ASCII, kept in ``PRAGMA application_id``."""
@@ -383,11 +383,11 @@ APPEND_ONLY = (search, row, flux)
 """Tables in which nothing is ever changed or removed; triggers refuse it."""
 
 
-def triggers() -> list[str]:
-    """Return the SQLite statements that keep history from being rewritten."""
+def triggers(tables: Iterable[Table] | None = None) -> list[str]:
+    """Return the SQLite statements that keep history from being rewritten, of all tables by default."""
     return [
         f"CREATE TRIGGER {table.name}_no_{what.lower()} BEFORE {what} ON {table.name} "
         f"BEGIN SELECT RAISE(ABORT, '{table.name} is append-only'); END"
-        for table in APPEND_ONLY
+        for table in (APPEND_ONLY if tables is None else tables)
         for what in ("UPDATE", "DELETE")
     ]
