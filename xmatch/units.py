@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from functools import lru_cache
 
 FORMS = (None, "cds", "vounit")
@@ -22,8 +23,7 @@ def unit_factor(served: str | None, wanted: str) -> float | None:
     Returns
     -------
     float or None
-        None when nothing turns one into the other: a missing unit, a logarithmic one, another dimension. A flux density
-        per beam counts as that of a point source.
+        None when nothing turns one into the other: a missing unit, a logarithmic one, another dimension.
     """
     if served == wanted:
         return 1.0
@@ -34,13 +34,12 @@ def unit_factor(served: str | None, wanted: str) -> float | None:
     target = u.Unit(wanted)
     for form in FORMS:
         try:
-            unit = u.Unit(served, format=form, parse_strict="silent")
+            with warnings.catch_warnings():
+                warnings.simplefilter("ignore")  # an odd spelling that is understood is no news
+                unit = u.Unit(served, format=form, parse_strict="silent")
             # logarithmic units would be taken for a factor, and are none
-            if not isinstance(unit, u.UnitBase):
-                continue
-            if u.beam in unit.decompose(bases={u.beam, *target.decompose().bases}).bases:
-                unit = unit * u.beam
-            return float(unit.to(target))
-        except (ValueError, TypeError, AttributeError, u.UnitsError):
+            if isinstance(unit, u.UnitBase):
+                return float(unit.to(target))
+        except (ValueError, TypeError, u.UnitsError):
             continue
     return None

@@ -136,9 +136,9 @@ def test_the_demo_shows_trouble_as_trouble() -> None:
 def test_catalogs_are_listed_and_shown() -> None:
     listed = run("catalogs")
     assert listed.returncode == 0 and all(name in listed.stdout for name in BUILT_TO_SHOW)
-    shown = run("catalogs", "2mass-psc")
+    shown = run("catalogs", "show", "2mass-psc")
     assert "2006AJ....131.1163S" in shown.stdout and "1594" in shown.stdout
-    assert run("catalogs", "nonsense").returncode == 2
+    assert run("catalogs", "show", "nonsense").returncode == 2
     assert len(json.loads(run("catalogs", "--json").stdout)) == len(BUILT_TO_SHOW)
 
 

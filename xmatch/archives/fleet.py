@@ -23,7 +23,7 @@ from xmatch import __version__
 from xmatch.archives import tap
 from xmatch.archives.bundle import Job, elsewhere, jobs_of, single
 from xmatch.archives.bundle import request_of as request_of
-from xmatch.archives.reading import judge
+from xmatch.archives.reading import Answer, judge
 from xmatch.archives.transport import Received, Request, Stop, Transport
 from xmatch.errors import ArchiveError, MisreadError, TruncatedError, UnansweredError
 from xmatch.records import Question, Reply, ReplyStatus
@@ -99,7 +99,14 @@ def ask_all(
     answered and returns at once.
     """
     jobs = jobs_of(questions, per_host=transport.per_host, bundling=bundling)
-    return _Fleet(jobs, transport, on_event).run()
+    return run_jobs(jobs, transport, on_event=on_event)
+
+
+def run_jobs(
+    jobs: Sequence[Job], transport: Transport, *, on_event: OnEvent | None = None, keep_body: bool = False
+) -> Iterator[Reply]:
+    """Work off jobs that are ready to be sent; see :func:`ask_all`. ``keep_body`` keeps the bytes of every reply."""
+    return _Fleet(jobs, transport, on_event, keep_body).run()
 
 
 def plan_requests(questions: Sequence[Question], per_host: int | None = None, bundling: bool = True) -> list[str]:
@@ -192,19 +199,20 @@ def _utc(transport: Transport) -> str:
     return transport.now().astimezone(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
 
 
-def _replies(exchange: _Exchange, transport: Transport) -> list[Reply]:
+def _replies(exchange: _Exchange, transport: Transport, keep_body: bool = False) -> list[Reply]:
     """Judge an exchange for each of its questions. No archive fault leaves here: each becomes a status with words."""
     outcome = exchange.outcome
     received = outcome if isinstance(outcome, Received) else None
     sha256 = hashlib.sha256(received.body).hexdigest() if received is not None else ""
+    answer = Answer(received.body) if received is not None else None
     replies = []
     for question in exchange.job.questions:
         fault = outcome if isinstance(outcome, ArchiveError) else None
         judged = None
-        if received is not None:
+        if received is not None and answer is not None:
             try:
                 judged = judge(
-                    received.body, received.http_status, received.content_type, question, bundled=exchange.job.is_bundle
+                    answer, received.http_status, received.content_type, question, bundled=exchange.job.is_bundle
                 )
             except ArchiveError as found:
                 fault = found
@@ -215,7 +223,7 @@ def _replies(exchange: _Exchange, transport: Transport) -> list[Reply]:
             status, detail = judged.status, judged.detail
         http_status = received.http_status if received is not None else getattr(fault, "http_status", None)
         retry_after = received.retry_after_s if received is not None else getattr(fault, "retry_after_s", None)
-        keep = received is not None and question.is_whole and status is ReplyStatus.WHOLE
+        keep = keep_body or (question.is_whole and status is ReplyStatus.WHOLE)
         replies.append(
             Reply(
                 question=question,
@@ -260,7 +268,10 @@ def _client(transport: Transport) -> str:
 class _Fleet:
     """Threads per host that work off its jobs; what a bundle leaves open is added while they work."""
 
-    def __init__(self, jobs: Sequence[Job], transport: Transport, on_event: OnEvent | None) -> None:
+    def __init__(
+        self, jobs: Sequence[Job], transport: Transport, on_event: OnEvent | None, keep_body: bool = False
+    ) -> None:
+        self.keep_body = keep_body
         self.transport = transport
         self.on_event = on_event
         self.stop = Stop()
@@ -320,7 +331,7 @@ class _Fleet:
 
     def settled(self, exchange: _Exchange) -> list[Reply]:
         """The replies that stand; the others of a bundle are put on the list again, alone."""
-        replies = _replies(exchange, self.transport)
+        replies = _replies(exchange, self.transport, self.keep_body)
         job = exchange.job
         if not job.is_bundle:
             again = self.in_other_format(exchange, replies[0])

@@ -11,8 +11,9 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
-from xmatch.archives.structure import Info, Skeleton, TableHead, skeleton_of
+from xmatch.archives.structure import FieldHead, Info, Skeleton, TableHead, skeleton_of
 from xmatch.archives.words import plain, seen, title_of
 from xmatch.errors import MisreadError, UnansweredError
 from xmatch.records import Column, Question, ReplyStatus
@@ -46,13 +47,28 @@ class Judged:
     n_rows: int
 
 
-def judge(raw: bytes, http_status: int, content_type: str, question: Question, *, bundled: bool = False) -> Judged:
+class Answer:
+    """The bytes of one answer, whose skeleton is read once for all the tables in it."""
+
+    def __init__(self, raw: bytes) -> None:
+        self.raw = raw
+        self.body = raw.lstrip(b"\xef\xbb\xbf \t\r\n")
+
+    @cached_property
+    def skeleton(self) -> Skeleton:
+        """What the answer says of itself; raises as :func:`~xmatch.archives.structure.skeleton_of`."""
+        return skeleton_of(self.body)
+
+
+def judge(
+    raw: bytes | Answer, http_status: int, content_type: str, question: Question, *, bundled: bool = False
+) -> Judged:
     """Judge one reply and decode its columns.
 
     Parameters
     ----------
-    raw : bytes
-        The whole body.
+    raw : bytes or Answer
+        The whole body; as an answer where several questions share it.
     http_status : int
         HTTP status.
     content_type : str
@@ -74,8 +90,9 @@ def judge(raw: bytes, http_status: int, content_type: str, question: Question, *
     MisreadError
         Everything else that must not be read as data.
     """
-    _check_http(raw, http_status)
-    body = raw.lstrip(b"\xef\xbb\xbf \t\r\n")
+    answer = raw if isinstance(raw, Answer) else Answer(raw)
+    body = answer.body
+    _check_http(answer.raw, http_status)
     if not body:
         raise MisreadError("the answer is empty, without even a table's head; ask again later")
     if _HTML_START.match(body[:4096]):
@@ -84,11 +101,11 @@ def judge(raw: bytes, http_status: int, content_type: str, question: Question, *
             "the archive may be down for maintenance, or the address has changed: ask again later"
         )
     if question.protocol == "file" and question.format != "votable":
-        return _judge_list(raw, question)
+        return _judge_list(answer.raw, question)
     if not body.startswith(b"<") and not body.startswith((b"\xff\xfe", b"\xfe\xff")):
         kind = f" ({plain(content_type, 40)})" if content_type else ""
         raise MisreadError(f"not XML{kind}: begins with {seen(body)}; ask again later")
-    skeleton = skeleton_of(body)
+    skeleton = answer.skeleton
     _check_statuses(skeleton, question)
     table = _table_of(skeleton, question)
     _check_declared_rows(table)
@@ -147,6 +164,11 @@ def _is_error(info: Info) -> bool:
     name = info.name.strip().lower()
     # some services put the status under a name of their own
     return name in _ERROR_NAMES or _status_value(info) == "ERROR"
+
+
+def heads(raw: bytes, question: Question) -> tuple[FieldHead, ...]:
+    """The fields of the table that answers a question, as declared. The reply must have been judged before."""
+    return tuple(_table_of(Answer(raw).skeleton, question).fields)
 
 
 def _judge_list(raw: bytes, question: Question) -> Judged:

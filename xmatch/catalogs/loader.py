@@ -46,7 +46,7 @@ COVERAGE_KINDS = ("all sky", "declination", "galactic box", "footprint", "pointe
 
 UNITS_OF_QUANTITY = {
     Quantity.MAGNITUDE: ("mag",),
-    Quantity.FLUX_DENSITY: ("Jy", "mJy", "uJy"),
+    Quantity.FLUX_DENSITY: ("Jy", "mJy", "uJy", "Jy/beam", "mJy/beam"),
     Quantity.BAND_FLUX: ("erg s-1 cm-2",),
 }
 _TO_HZ = {
@@ -135,7 +135,9 @@ class _Reader(Checked):
         if not isinstance(notes, list) or not all(isinstance(item, str) for item in notes):
             raise self.fault("notes", notes, "a list of sentences is needed")
         columns = self.section(
-            "columns", top.get("columns"), ("key", "ra", "dec", "source", "error", "motion", "units", "positions")
+            "columns",
+            top.get("columns"),
+            ("key", "ra", "dec", "source", "error", "motion", "units", "positions", "keep"),
         )
         self.need_source("columns", columns)
         if columns.get("positions", "decimal") not in POSITIONS:

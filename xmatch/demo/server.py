@@ -10,7 +10,7 @@ import io
 import re
 import socket
 import threading
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from http import HTTPStatus
 from http.server import BaseHTTPRequestHandler, ThreadingHTTPServer
@@ -69,7 +69,9 @@ class EmbeddedArchive:
     ----------
     tables : sequence of DemoTable
         What it serves: by the VizieR request form under ``remote_table``, and by cone search under
-        ``cone_path``.
+        ``cone_path``, by TAP and as files likewise.
+    documents : mapping of str to bytes, optional
+        Files that are served as they are, by ``host/path?query``; their faults are those of ``documents``.
 
     Attributes
     ----------
@@ -79,8 +81,9 @@ class EmbeddedArchive:
         Everything that was asked, in the order of arrival.
     """
 
-    def __init__(self, tables: Sequence[DemoTable]) -> None:
+    def __init__(self, tables: Sequence[DemoTable], documents: Mapping[str, bytes] | None = None) -> None:
         self.tables = tuple(tables)
+        self.documents = dict(documents or {})
         self.requests: list[Logged] = []
         self.address = ""
         self.closing = threading.Event()
@@ -225,6 +228,9 @@ class _Handler(BaseHTTPRequestHandler):
     def served(self, path: str, query: str, body: str, tables: list[DemoTable]) -> _Served | None:
         """What the service at this path says, before it is spoilt; None where there is no service."""
         plain: tuple[int, dict[str, str]] = (200, {})
+        document = self.server.archive.documents.get(unquote(self.path).lstrip("/"))
+        if document is not None:
+            return document, self.faults(["documents"]), "application/octet-stream", *plain
         if self.command == "POST" and path == VIZIER_PATH and tables:
             form = VizierForm.of(body)
             named = form.tables(tables)
