@@ -7,19 +7,21 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from datetime import UTC, datetime
 from pathlib import Path
 from types import TracebackType
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
 from sqlalchemy import Connection, Engine, func, select, update
 
 from xmatch.assumptions import Assumptions
 from xmatch.errors import StoreError
-from xmatch.records import Band, Look, ReplyStatus, Rows, Search, Target, Waveband
-from xmatch.store import concluding, reading, schema, writing
+from xmatch.records import Band, Floats, Look, ReplyStatus, Rows, Search, Target, Waveband
+from xmatch.store import concluding, near, reading, schema, writing
 from xmatch.store.border import bound, integer, json_text, text, utc_text
+from xmatch.store.near import Dialect, Near, Pairs
 from xmatch.store.opening import WRITE, connect, locate, translated
 
 if TYPE_CHECKING:
@@ -252,6 +254,51 @@ class Store:
         self._remarks.extend(remark for remark in remarks if remark not in self._remarks)
         return rows
 
+    def near(
+        self, ra_deg: float, dec_deg: float, radius_arcsec: float | Mapping[str, float], *, history: bool = False
+    ) -> list[Near]:
+        """Return the stored rows of any catalog within a radius of a position, nearest first.
+
+        Parameters
+        ----------
+        ra_deg, dec_deg : float
+            ICRS degrees.
+        radius_arcsec : float or mapping of str to float
+            One radius for all, or the radius of each catalog wanted by its id; 0 to 648000 arcsec.
+        history : bool
+            Also the listings of earlier searches; by default each source of a table is there once, from the
+            latest search that found it.
+
+        Raises
+        ------
+        RangeError
+            A position or a radius that is none.
+
+        Notes
+        -----
+        No row does not mean an empty sky: the store holds what was asked for.
+        """
+        with self._driver_cursor() as (cursor, dialect):
+            return near.near(cursor, dialect, ra_deg, dec_deg, radius_arcsec, history=history)
+
+    def near_many(self, ra_deg: Floats, dec_deg: Floats, radius_arcsec: Floats | float) -> Pairs:
+        """Return which stored rows lie near which of many positions, every listing, in the order of the positions.
+
+        Parameters
+        ----------
+        ra_deg, dec_deg : array of float, shape (n,)
+            ICRS degrees.
+        radius_arcsec : float or array of float, shape (n,)
+            Radius of each, 0 to 648000 arcsec.
+
+        Raises
+        ------
+        RangeError
+            A position or a radius that is none.
+        """
+        with self._driver_cursor() as (cursor, dialect):
+            return near.near_many(cursor, dialect, ra_deg, dec_deg, np.asarray(radius_arcsec, dtype=np.float64))
+
     def frame(self, sql: str, params: Mapping[str, object] | Sequence[object] | None = None) -> pd.DataFrame:
         """Return the answer to a SELECT as a pandas table, for work of one's own. Nothing can be changed by it.
 
@@ -313,6 +360,13 @@ class Store:
     def _reading(self) -> Iterator[Connection]:
         with translated(self.path), self._open_engine().connect() as connection:
             yield connection
+
+    @contextmanager
+    def _driver_cursor(self) -> Iterator[tuple[Any, Dialect]]:
+        """The driver's own cursor, for statements where a layer in between would cost as much as the answer."""
+        engine = self._open_engine()
+        with translated(self.path), closing(engine.raw_connection()) as pooled, closing(pooled.cursor()) as cursor:
+            yield cursor, near.DIALECTS[engine.dialect.name]
 
     def _open_engine(self) -> Engine:
         if self._engine is None:
