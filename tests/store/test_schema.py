@@ -71,7 +71,7 @@ def test_every_real_number_has_a_unit() -> None:
 
 
 def test_the_file_says_whose_it_is(raw: sqlite3.Connection) -> None:
-    assert raw.execute("PRAGMA user_version").fetchone() == (1,)
+    assert raw.execute("PRAGMA user_version").fetchone() == (schema.SCHEMA_VERSION,)
     assert raw.execute("PRAGMA application_id").fetchone()[0].to_bytes(4, "big") == b"BLKF"
     assert raw.execute("PRAGMA journal_mode").fetchone() == ("wal",)
 

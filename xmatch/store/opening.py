@@ -14,8 +14,8 @@ from sqlalchemy import URL, Connection, Engine, create_engine, event, make_url
 from sqlalchemy.exc import ArgumentError, DBAPIError
 
 from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
-from xmatch.resources import db_path
-from xmatch.store.schema import APPLICATION_ID, SCHEMA_VERSION, metadata, triggers
+from xmatch.store.making import make
+from xmatch.store.schema import APPLICATION_ID, SCHEMA_VERSION
 
 ENVIRONMENT = "BLANKFIELD_STORE"
 OLDEST_SQLITE = (3, 37, 0)
@@ -131,13 +131,27 @@ def connect(path: Path, *, read_only: bool, wait_s: float) -> tuple[Engine, list
     engine = _engine(path, read_only=read_only, wait_s=wait_s, durable=network is not None)
     try:
         with translated(path):
-            fresh = _is_fresh(engine, path)
-            if fresh and read_only:
+            version = _version(engine, path)
+            if read_only and version == 0:
                 raise StoreError(f"{path} is an empty file, not a store yet; run a look first, or give another --store")
+            if read_only and version < SCHEMA_VERSION:
+                raise StoreVersionError(
+                    f"{path} has schema version {version} and this blankfield reads {SCHEMA_VERSION}; "
+                    "blankfield store upgrade brings it there and keeps a copy; it was left alone"
+                )
             if not read_only:
                 _set_journal(engine, "delete" if network is not None else "wal", wait_s)
-                if fresh:
+                if version == 0:
                     _make(engine, path)
+                elif version < SCHEMA_VERSION:
+                    from xmatch.store.upgrading import upgrade_file
+
+                    copy = upgrade_file(engine.execution_options(**{WRITE: True}), path, version)
+                    if copy is not None:
+                        remarks.append(
+                            f"the store {path} was brought from schema version {version} to {SCHEMA_VERSION}; "
+                            f"{copy} is a copy of it as it was"
+                        )
     except BaseException:
         engine.dispose()
         raise
@@ -187,22 +201,39 @@ def _engine(path: Path, *, read_only: bool, wait_s: float, durable: bool) -> Eng
     return engine
 
 
-def _is_fresh(engine: Engine, path: Path) -> bool:
-    """Whether the file holds nothing yet. A file that is neither empty nor ours is refused."""
+def _version(engine: Engine, path: Path) -> int:
+    """Schema version of the file, 0 when it holds nothing yet. A file that is neither empty nor ours is refused."""
     with engine.connect() as connection:
         ours = connection.exec_driver_sql("PRAGMA application_id").scalar_one()
-        version = connection.exec_driver_sql("PRAGMA user_version").scalar_one()
+        version = int(connection.exec_driver_sql("PRAGMA user_version").scalar_one())
         things = connection.exec_driver_sql("SELECT count(*) FROM sqlite_master").scalar_one()
     if ours != APPLICATION_ID:
         if ours == 0 and version == 0 and things == 0:
-            return True
+            return 0
         raise StoreError(f"{path} is an SQLite file but not a store of blankfield; left alone; give another path")
-    if version != SCHEMA_VERSION:
+    if not 1 <= version <= SCHEMA_VERSION:
         raise StoreVersionError(
             f"{path} has schema version {version}, this blankfield reads and writes {SCHEMA_VERSION}; "
             f"use the blankfield that made it, or give another --store; it was left alone"
         )
-    return False
+    return version
+
+
+def version_of(path: Path) -> int:
+    """Return the schema version of a store without changing anything.
+
+    Raises
+    ------
+    StoreError, StoreVersionError
+        When there is none, it is not a store, or of a version yet to come.
+    """
+    _check_place(path, True)
+    engine = _engine(path, read_only=True, wait_s=1.0, durable=False)
+    try:
+        with translated(path):
+            return _version(engine, path)
+    finally:
+        engine.dispose()
 
 
 def _set_journal(engine: Engine, mode: str, wait_s: float) -> None:
@@ -228,22 +259,7 @@ def _make(engine: Engine, path: Path) -> None:
     with engine.execution_options(**{WRITE: True}).begin() as connection:
         if connection.exec_driver_sql("PRAGMA application_id").scalar_one() == APPLICATION_ID:
             return
-        metadata.create_all(connection)
-        for statement in (*triggers(), *statements(db_path("views.sql").read_text(encoding="utf-8"))):
-            connection.exec_driver_sql(statement)
-        connection.exec_driver_sql(f"PRAGMA application_id = {APPLICATION_ID}")
-        connection.exec_driver_sql(f"PRAGMA user_version = {SCHEMA_VERSION}")
-
-
-def statements(script: str) -> list[str]:
-    """Split an SQL script into its statements."""
-    found, pending = [], ""
-    for line in script.splitlines(keepends=True):
-        pending += line
-        if sqlite3.complete_statement(pending):
-            found.append(pending.strip())
-            pending = ""
-    return found
+        make(connection)
 
 
 def network_file_system(path: Path, mounts: str | None = None) -> str | None:

@@ -357,6 +357,12 @@ class Store:
             yield connection
 
     @contextmanager
+    def reading(self) -> Iterator[Connection]:
+        """A SQLAlchemy connection for questions of the room's own; what it raises is translated."""
+        with self._reading() as connection:
+            yield connection
+
+    @contextmanager
     def _reading(self) -> Iterator[Connection]:
         with translated(self.path), self._open_engine().connect() as connection:
             yield connection
