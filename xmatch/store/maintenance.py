@@ -6,7 +6,8 @@ from pathlib import Path
 
 from xmatch.errors import StoreError
 from xmatch.store import checking
-from xmatch.store.opening import locate, version_of
+from xmatch.store.opening import version_of
+from xmatch.store.place import locate
 from xmatch.store.schema import SCHEMA_VERSION
 from xmatch.store.store import open_store
 from xmatch.store.upgrading import copy_file

@@ -10,14 +10,14 @@ from contextlib import closing, contextmanager
 from pathlib import Path
 from urllib.parse import quote
 
-from sqlalchemy import URL, Connection, Engine, create_engine, event, make_url
-from sqlalchemy.exc import ArgumentError, DBAPIError
+from sqlalchemy import URL, Connection, Engine, create_engine, event
+from sqlalchemy.exc import DBAPIError
 
-from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
+from xmatch.errors import StoreBusyError, StoreError, StoreVersionError
+from xmatch.store import functions
 from xmatch.store.making import make
-from xmatch.store.schema import APPLICATION_ID, SCHEMA_VERSION
+from xmatch.store.place import APPLICATION_ID, SCHEMA_VERSION
 
-ENVIRONMENT = "BLANKFIELD_STORE"
 OLDEST_SQLITE = (3, 37, 0)
 """First SQLite with STRICT tables (sqlite.org/stricttables.html)."""
 WRITE = "blankfield_write"
@@ -50,47 +50,6 @@ NETWORK_FILE_SYSTEMS = frozenset(
 """File systems whose locks and shared memory do not reach the other machines that use them."""
 MOUNTS = Path("/proc/mounts")
 _RETRY_S = 0.02
-
-
-def locate(where: str | Path | None = None) -> Path:
-    """Return the path of the store: the argument, else ``BLANKFIELD_STORE``, else one file in the data folder.
-
-    Parameters
-    ----------
-    where : str or Path, optional
-        A path, or a URL ``sqlite:///path``.
-
-    Raises
-    ------
-    ConfigurationError
-        For a URL of another kind: SQLite files are what there is so far.
-    """
-    if where is None or where == "":
-        where = os.environ.get(ENVIRONMENT) or None
-    if where is None:
-        import platformdirs
-
-        return Path(platformdirs.user_data_dir("blankfield", appauthor=False)) / "blankfield.sqlite"
-    if isinstance(where, str) and ("://" in where or where.startswith("sqlite:")):
-        where = _path_of(where)
-    if str(where) == ":memory:":
-        raise ConfigurationError("the store is ':memory:', which would be lost at once; give the path of a file")
-    return Path(where).expanduser().absolute()
-
-
-def _path_of(text: str) -> str:
-    try:
-        url = make_url(text)
-    except ArgumentError:
-        # the text is not repeated: it may hold a password
-        raise ConfigurationError("the store is a URL that cannot be read; write sqlite:///path or a path") from None
-    if url.get_backend_name() != "sqlite":
-        raise ConfigurationError(
-            f"the store is a {url.get_backend_name()} URL; only sqlite:///path or a path can be used so far"
-        )
-    if not url.database or url.query:
-        raise ConfigurationError(f"the store is {text!r}; write sqlite:///path, without options, or a path")
-    return url.database
 
 
 def connect(path: Path, *, read_only: bool, wait_s: float) -> tuple[Engine, list[str]]:
@@ -187,6 +146,7 @@ def _engine(path: Path, *, read_only: bool, wait_s: float, durable: bool) -> Eng
         # isolation_level None: SQLAlchemy's "begin" below says BEGIN, not the driver at its own time
         connection = sqlite3.connect(uri, uri=True, timeout=wait_s, isolation_level=None, check_same_thread=False)
         connection.execute("PRAGMA foreign_keys = ON")
+        functions.register(connection)
         # with a write-ahead log, NORMAL survives a crash of the program and keeps the file whole in a power cut
         connection.execute(f"PRAGMA synchronous = {'FULL' if durable else 'NORMAL'}")
         return connection

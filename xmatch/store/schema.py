@@ -37,14 +37,10 @@ from xmatch.records import (
     StandingWord,
     Waveband,
 )
+from xmatch.store.place import APPLICATION_ID, REVISION, REVISION_TABLE, SCHEMA_VERSION
 
-SCHEMA_VERSION = 2
-"""Kept in ``PRAGMA user_version``; an older one is upgraded, a newer one never opened."""
-REVISION = f"{SCHEMA_VERSION:04d}"
-"""The same as the last file in ``db/migrations/versions`` names it."""
-REVISION_TABLE = "schema_revision"
-APPLICATION_ID = 0x424C4B46
-"""``BLKF`` in ASCII, kept in ``PRAGMA application_id``."""
+__all__ = ["APPEND_ONLY", "APPLICATION_ID", "REVISION", "REVISION_TABLE", "SCHEMA_VERSION", "metadata", "triggers"]
+
 HEALPIX_ORDER = 29
 """Order of the nested HEALPix index: a coarser order is a shift by two bits a step."""
 

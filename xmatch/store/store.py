@@ -22,7 +22,8 @@ from xmatch.records import Band, Floats, Look, ReplyStatus, Rows, Search, Target
 from xmatch.store import concluding, near, reading, schema, writing
 from xmatch.store.border import bound, integer, json_text, text, utc_text
 from xmatch.store.near import Dialect, Near, Pairs
-from xmatch.store.opening import WRITE, connect, locate, translated
+from xmatch.store.opening import WRITE, connect, translated
+from xmatch.store.place import locate
 
 if TYPE_CHECKING:
     import pandas as pd
