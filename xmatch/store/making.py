@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-import sqlite3
-
 from sqlalchemy import Connection, delete, insert, inspect, text
 
 from xmatch.resources import db_path
 from xmatch.store.schema import APPLICATION_ID, REVISION, SCHEMA_VERSION, metadata, schema_revision, triggers
+from xmatch.store.scripts import statements
 
 
 def make(connection: Connection) -> None:
@@ -48,14 +47,3 @@ def stamp(connection: Connection, revision: str = REVISION) -> None:
         connection.exec_driver_sql(f"PRAGMA application_id = {APPLICATION_ID}")
         if revision == REVISION:
             connection.exec_driver_sql(f"PRAGMA user_version = {SCHEMA_VERSION}")
-
-
-def statements(script: str) -> list[str]:
-    """Split an SQL script into its statements."""
-    found, pending = [], ""
-    for line in script.splitlines(keepends=True):
-        pending += line
-        if sqlite3.complete_statement(pending):
-            found.append(pending.strip())
-            pending = ""
-    return found
