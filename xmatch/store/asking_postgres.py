@@ -39,7 +39,7 @@ def driver() -> Any:
 
 
 def marks(sql: str) -> str:
-    """Turn ``:name`` and ``?``-free SQL into the driver's own marks; quotes, comments and casts are left alone."""
+    """Turn ``:name`` and ``?`` into the driver's own marks; quotes, comments and casts are left alone."""
     out, place, n = [], 0, len(sql)
     while place < n:
         char = sql[place]
@@ -60,6 +60,10 @@ def marks(sql: str) -> str:
             while end < n and (sql[end].isalnum() or sql[end] == "_"):
                 end += 1
             out.append(f"%({sql[place + 1 : end]})s")
+            place = end
+            continue
+        elif char == "?":
+            out.append("%s")
             place = end
             continue
         out.append(sql[place:end].replace("%", "%%"))

@@ -24,7 +24,9 @@ def make_views(connection: Connection) -> None:
         # one text: plpgsql bodies hold semicolons
         connection.exec_driver_sql(db_path("functions-postgresql.sql").read_text(encoding="utf-8").replace("%", "%%"))
     for statement in statements(db_path("views.sql").read_text(encoding="utf-8")):
-        connection.exec_driver_sql(statement)
+        connection.exec_driver_sql(
+            statement.replace("%", "%%") if connection.dialect.name == "postgresql" else statement
+        )
 
 
 def drop_views(connection: Connection) -> None:

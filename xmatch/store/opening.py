@@ -1,27 +1,24 @@
-"""Finding, checking and opening the file; and turning what SQLite says into errors a person can act on."""
+"""Checking and opening the file."""
 
 from __future__ import annotations
 
 import os
 import sqlite3
 import time
-from collections.abc import Iterator
-from contextlib import closing, contextmanager
+from contextlib import closing
 from pathlib import Path
 from urllib.parse import quote
 
 from sqlalchemy import URL, Connection, Engine, create_engine, event
-from sqlalchemy.exc import DBAPIError
 
-from xmatch.errors import StoreBusyError, StoreError, StoreVersionError
+from xmatch.errors import StoreError, StoreVersionError
 from xmatch.store import functions
 from xmatch.store.making import make
 from xmatch.store.place import APPLICATION_ID, SCHEMA_VERSION
+from xmatch.store.translating import WRITE, is_busy, translated
 
 OLDEST_SQLITE = (3, 37, 0)
 """First SQLite with STRICT tables (sqlite.org/stricttables.html)."""
-WRITE = "blankfield_write"
-"""Execution option of connections that take the write lock when they begin, not when they first write."""
 NETWORK_FILE_SYSTEMS = frozenset(
     (
         "9p",
@@ -209,7 +206,7 @@ def _set_journal(engine: Engine, mode: str, wait_s: float) -> None:
                     driver.execute(f"PRAGMA journal_mode = {mode}").fetchone()
                 return
             except sqlite3.Error as fault:
-                if not _is_busy(fault) or time.monotonic() > deadline:
+                if not is_busy(fault) or time.monotonic() > deadline:
                     raise
                 time.sleep(_RETRY_S)
 
@@ -248,35 +245,3 @@ def network_file_system(path: Path, mounts: str | None = None) -> str | None:
         if place.is_relative_to(point) and len(point.parts) >= longest:
             longest, kind = len(point.parts), fields[2]
     return kind if kind in NETWORK_FILE_SYSTEMS else None
-
-
-@contextmanager
-def translated(path: Path) -> Iterator[None]:
-    """Turn what the driver says inside the block into a :class:`StoreError` that names the file."""
-    try:
-        yield
-    except DBAPIError as fault:
-        raise _as_store_error(fault.orig or fault, path) from fault
-    except sqlite3.Error as fault:
-        raise _as_store_error(fault, path) from fault
-
-
-def _is_busy(fault: BaseException | None) -> bool:
-    return str(getattr(fault, "sqlite_errorname", "")).startswith(("SQLITE_BUSY", "SQLITE_LOCKED"))
-
-
-def _as_store_error(fault: BaseException, path: Path) -> StoreError:
-    name = str(getattr(fault, "sqlite_errorname", ""))
-    if _is_busy(fault):
-        return StoreBusyError(f"{path} is locked by another writer; wait until it has finished, then repeat")
-    if name.startswith("SQLITE_FULL"):
-        return StoreError(f"no room left to write {path}; free some space, then repeat; what was stored is whole")
-    if name.startswith(("SQLITE_READONLY", "SQLITE_CANTOPEN", "SQLITE_PERM")):
-        return StoreError(f"{path} cannot be opened for this ({fault}); check its permissions and those of its folder")
-    if name.startswith("SQLITE_NOTADB"):
-        return StoreError(f"{path} is not an SQLite file; it was left alone; give another --store")
-    if name.startswith("SQLITE_CORRUPT"):
-        return StoreError(f"{path} is damaged ({fault}); restore it from a copy, or look again with another --store")
-    if name.startswith("SQLITE_CONSTRAINT"):
-        return StoreError(f"{path} refused what was to be stored ({fault}); nothing of it was kept; please report this")
-    return StoreError(f"{path}: {fault}; the tables are told in db/README.md")

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 from pathlib import Path
-from urllib.parse import unquote, urlsplit, urlunsplit
+from urllib.parse import urlsplit
 
 from xmatch.errors import ConfigurationError
 
@@ -76,21 +76,17 @@ def _postgresql(text: str) -> str:
             "the store is a postgresql URL that names no database, or cannot be read; "
             "write postgresql+psycopg://user@host/database or the path of a file"
         )
-    return urlunsplit(("postgresql+psycopg", *parts[1:]))
+    return "postgresql+psycopg" + text[text.index("://") :]
 
 
 def shown(url: str) -> str:
     """Return the URL of a PostgreSQL store without its password, for people."""
-    parts = urlsplit(url)
-    user, at, host = parts.netloc.rpartition("@")
-    return urlunsplit(parts._replace(netloc=user.partition(":")[0] + at + host, query=""))
+    kind, _, rest = url.partition("://")
+    netloc, slash, path = rest.partition("?")[0].partition("/")
+    user, at, host = netloc.rpartition("@")
+    return f"{kind}://{user.partition(':')[0]}{at}{host}{slash}{path}"
 
 
 def driver_url(url: str) -> str:
     """Return the URL as the PostgreSQL driver itself takes it."""
     return "postgresql" + url[url.index("://") :]
-
-
-def database_name(url: str) -> str:
-    """Return the name of the database in a PostgreSQL URL."""
-    return unquote(urlsplit(url).path.strip("/"))

@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from sqlalchemy import Connection, Engine, func, select, update
+from sqlalchemy import text as text_of_sql
 
 from xmatch.assumptions import Assumptions
 from xmatch.errors import StoreError
@@ -22,8 +23,9 @@ from xmatch.records import Band, Floats, Look, ReplyStatus, Rows, Search, Target
 from xmatch.store import concluding, near, reading, schema, writing
 from xmatch.store.border import bound, integer, json_text, text, utc_text
 from xmatch.store.near import Dialect, Near, Pairs
-from xmatch.store.opening import WRITE, connect, translated
-from xmatch.store.place import locate
+from xmatch.store.opening import connect
+from xmatch.store.place import locate, shown
+from xmatch.store.translating import WRITE, translated
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -40,7 +42,7 @@ def open_store(where: str | Path | None = None, *, read_only: bool = False, wait
     Parameters
     ----------
     where : str or Path, optional
-        A path or ``sqlite:///path``. By default the environment variable ``BLANKFIELD_STORE``, else
+        A path, ``sqlite:///path`` or ``postgresql+psycopg://user@host/database``. By default the environment variable ``BLANKFIELD_STORE``, else
         ``blankfield.sqlite`` in the user's data folder.
     read_only : bool
         Never write and never make.
@@ -50,7 +52,7 @@ def open_store(where: str | Path | None = None, *, read_only: bool = False, wait
     Raises
     ------
     ConfigurationError
-        A URL that is not ``sqlite:///path``.
+        A URL of another kind, or the driver of PostgreSQL is not installed.
     StoreVersionError
         A store of another schema version; it is left alone.
     StoreBusyError
@@ -58,9 +60,14 @@ def open_store(where: str | Path | None = None, *, read_only: bool = False, wait
     StoreError
         Not a store, not readable, not writable, or not there and ``read_only``.
     """
-    path = locate(where)
-    engine, remarks = connect(path, read_only=read_only, wait_s=wait_s)
-    return Store(engine, path, remarks, read_only=read_only)
+    place = locate(where)
+    if isinstance(place, Path):
+        engine, remarks = connect(place, read_only=read_only, wait_s=wait_s)
+    else:
+        from xmatch.store import postgres
+
+        engine, remarks = postgres.connect(place, read_only=read_only, wait_s=wait_s)
+    return Store(engine, place, remarks, read_only=read_only)
 
 
 class Store:
@@ -71,12 +78,14 @@ class Store:
 
     Attributes
     ----------
-    path : Path
-        The file.
+    place : Path or str
+        The file, or the URL of the PostgreSQL database.
     """
 
-    def __init__(self, engine: Engine, path: Path, remarks: Sequence[str] = (), *, read_only: bool = False) -> None:
-        self.path = path
+    def __init__(
+        self, engine: Engine, place: Path | str, remarks: Sequence[str] = (), *, read_only: bool = False
+    ) -> None:
+        self.place = place
         self.read_only = read_only
         self._engine: Engine | None = engine
         self._remarks = list(remarks)
@@ -99,13 +108,26 @@ class Store:
 
     @property
     def name(self) -> str:
-        """The path as text, for people."""
-        return str(self.path)
+        """Where it is, for people: without a password."""
+        return str(self.place) if isinstance(self.place, Path) else shown(self.place)
+
+    @property
+    def path(self) -> Path:
+        """The file.
+
+        Raises
+        ------
+        StoreError
+            The store is a PostgreSQL database.
+        """
+        if not isinstance(self.place, Path):
+            raise StoreError(f"{self.name} is a database on a server; only a file has a path")
+        return self.place
 
     @property
     def url(self) -> str:
-        """The store as a SQLAlchemy URL."""
-        return f"sqlite:///{self.path}"
+        """The store as a SQLAlchemy URL, with its password if it has one."""
+        return f"sqlite:///{self.place}" if isinstance(self.place, Path) else self.place
 
     @property
     def remarks(self) -> tuple[str, ...]:
@@ -321,6 +343,11 @@ class Store:
         elif params is not None:
             values = tuple(bound(value) for value in params)
         with self._reading() as connection:
+            if connection.dialect.name == "postgresql":
+                from xmatch.store.asking_postgres import marks
+
+                connection.exec_driver_sql("SET TRANSACTION READ ONLY")
+                return reading.frame(connection, marks(sql), values)
             connection.exec_driver_sql("PRAGMA query_only = ON")
             try:
                 return reading.frame(connection, sql, values)
@@ -337,7 +364,7 @@ class Store:
             return {
                 "store": self.name,
                 "schema_version": schema.SCHEMA_VERSION,
-                "size_bytes": self.path.stat().st_size,
+                "size_bytes": self._size(connection),
                 "targets": counts[0],
                 "runs": counts[1],
                 "searches": counts[2],
@@ -348,13 +375,24 @@ class Store:
                 "last_asked_at": connection.execute(select(func.max(search.c.asked_at))).scalar_one(),
             }
 
+    def _size(self, connection: Connection) -> int:
+        if isinstance(self.place, Path):
+            return self.place.stat().st_size
+        return int(connection.execute(text_of_sql("SELECT pg_database_size(current_database())")).scalar_one())
+
     # --- connections -------------------------------------------------------------------------------
     @contextmanager
     def _writing(self) -> Iterator[Connection]:
         if self.read_only:
-            raise StoreError(f"{self.path} was opened read-only; open it without read_only to write")
+            raise StoreError(f"{self.name} was opened read-only; open it without read_only to write")
         engine = self._open_engine().execution_options(**{WRITE: True})
-        with translated(self.path), engine.begin() as connection:
+        with translated(self.place), engine.begin() as connection:
+            yield connection
+
+    @contextmanager
+    def writing(self) -> Iterator[Connection]:
+        """A SQLAlchemy connection inside one transaction, for work of the room's own."""
+        with self._writing() as connection:
             yield connection
 
     @contextmanager
@@ -365,19 +403,19 @@ class Store:
 
     @contextmanager
     def _reading(self) -> Iterator[Connection]:
-        with translated(self.path), self._open_engine().connect() as connection:
+        with translated(self.place), self._open_engine().connect() as connection:
             yield connection
 
     @contextmanager
     def _driver_cursor(self) -> Iterator[tuple[Any, Dialect]]:
         """The driver's own cursor, for statements where a layer in between would cost as much as the answer."""
         engine = self._open_engine()
-        with translated(self.path), closing(engine.raw_connection()) as pooled, closing(pooled.cursor()) as cursor:
+        with translated(self.place), closing(engine.raw_connection()) as pooled, closing(pooled.cursor()) as cursor:
             yield cursor, near.DIALECTS[engine.dialect.name]
 
     def _open_engine(self) -> Engine:
         if self._engine is None:
-            raise StoreError(f"{self.path} was closed; open it again")
+            raise StoreError(f"{self.name} was closed; open it again")
         return self._engine
 
 
