@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -87,7 +88,7 @@ def test_many_positions_come_back_in_their_order(scene: Any, build: Any) -> None
     assert [len(part) for part in scene.store.near_many(np.zeros(0), np.zeros(0), 5.0)] == [0, 0, 0, 0]
 
 
-def test_the_plan_uses_the_clustered_key(scene: Any) -> None:
+def test_the_plan_uses_the_clustered_key(scene: Any, path: Path) -> None:
     values = {"ra": 1.0, "dec": 2.0, "cos_dec": 1.0, "stretches": "[[1,2]]", "wanted": "[]", "h": 1.0}
     for statement in (
         near.DIALECTS["sqlite"].within,

@@ -89,6 +89,8 @@ def ask(
                 cursor.execute(marks(sql.strip().rstrip(";")), dict(params))
                 columns = [column.name for column in cursor.description or ()]
                 yield columns, (tuple(map(_plain, line)) for line in cursor)
+            # whatever a function did on the side is undone
+            connection.rollback()
     except psycopg.Error as fault:
         raise _as_error(fault, url, time_limit_s) from fault
 

@@ -54,8 +54,9 @@ def _searches(connection: Connection) -> Iterator[str]:
 
 def _positions(connection: Connection) -> Iterator[str]:
     row = schema.row
-    result = connection.execution_options(stream_results=True).execute(
-        select(row.c.hpx29, row.c.ra_deg, row.c.dec_deg, row.c.search_id, row.c.ordinal)
+    result = connection.execute(
+        select(row.c.hpx29, row.c.ra_deg, row.c.dec_deg, row.c.search_id, row.c.ordinal),
+        execution_options={"stream_results": True},
     )
     while part := result.fetchmany(_PART):
         hpx, ra, dec, search, ordinal = (np.array(column) for column in zip(*part, strict=True))

@@ -109,7 +109,7 @@ def _copy(old: Connection, new: Connection, target: Store) -> list[Copied]:
 def _parts(connection: Connection, table: Table) -> Iterator[list[tuple[Any, ...]]]:
     # in the order of the key, so that a clustered table is written as it lies
     statement = select(table).order_by(*table.primary_key.columns)
-    result = connection.execution_options(stream_results=True).execute(statement)
+    result = connection.execute(statement, execution_options={"stream_results": True})
     while part := result.fetchmany(_PART):
         yield [tuple(row) for row in part]
 

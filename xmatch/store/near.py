@@ -15,16 +15,17 @@ import numpy as np
 from xmatch.records import Floats
 from xmatch.store import cone, cones
 
+_NEAR = """
+    SELECT row.search_id, row.ordinal, row.source_key, row.ra_deg, row.dec_deg,
+           {h} AS h
+    FROM {stretches}
+    CROSS JOIN row
+    WHERE row.hpx29 BETWEEN {low} AND {high}
+"""
 _ROWS = """
     SELECT catalog.catalog_id, catalog.release, search.table_name, near.search_id, near.ordinal, near.source_key,
            near.ra_deg, near.dec_deg, near.h
-    FROM (
-        SELECT row.search_id, row.ordinal, row.source_key, row.ra_deg, row.dec_deg,
-               {h} AS h
-        FROM {stretches}
-        CROSS JOIN row
-        WHERE row.hpx29 BETWEEN {low} AND {high}
-    ) AS near
+    FROM {near} AS near
     JOIN search ON search.search_id = near.search_id
     JOIN catalog ON catalog.catalog_key = search.catalog_key
 """
@@ -45,12 +46,13 @@ class Dialect(NamedTuple):
 
 
 def _sqlite() -> Dialect:
-    rows = _ROWS.format(
+    near = _NEAR.format(
         h=_H.format(dec=":dec", ra=":ra", cos_dec=":cos_dec"),
         stretches="json_each(:stretches) AS stretch",
         low="json_extract(stretch.value, '$[0]')",
         high="json_extract(stretch.value, '$[1]')",
     )
+    rows = _ROWS.format(near=f"({near})")
     wanted = "WITH wanted AS MATERIALIZED (SELECT json_extract(value, '$[0]') AS catalog_key, json_extract(value, '$[1]') AS h FROM json_each(:wanted)) "
     return Dialect(
         within=rows + "WHERE near.h <= :h",
@@ -69,14 +71,18 @@ def _postgresql() -> Dialect:
         "(SELECT (part ->> 0)::bigint AS low, (part ->> 1)::bigint AS high"
         " FROM json_array_elements(%(stretches)s::json) AS part) AS stretch"
     )
-    rows = _ROWS.format(h=h, stretches=stretches, low="stretch.low", high="stretch.high")
+    near = _NEAR.format(h=h, stretches=stretches, low="stretch.low", high="stretch.high")
+    # materialised, because this planner would rather come in by search and read every row of it
+    near = f"near AS MATERIALIZED ({near})"
+    rows = _ROWS.format(near="near")
     wanted = (
-        "WITH wanted AS MATERIALIZED (SELECT (part ->> 0)::bigint AS catalog_key, (part ->> 1)::float8 AS h"
-        " FROM json_array_elements(%(wanted)s::json) AS part) "
+        "wanted AS MATERIALIZED (SELECT (part ->> 0)::bigint AS catalog_key, (part ->> 1)::float8 AS h"
+        " FROM json_array_elements(%(wanted)s::json) AS part)"
     )
     return Dialect(
-        within=rows + "WHERE near.h <= %(h)s",
-        within_each=wanted + rows + "JOIN wanted ON wanted.catalog_key = catalog.catalog_key WHERE near.h <= wanted.h",
+        within=f"WITH {near} {rows} WHERE near.h <= %(h)s",
+        within_each=f"WITH {near}, {wanted} {rows} JOIN wanted ON wanted.catalog_key = catalog.catalog_key "
+        "WHERE near.h <= wanted.h",
         keys="SELECT catalog_id, catalog_key FROM catalog",
         pairs=f"SELECT row.search_id, row.ordinal, {h} AS h FROM {stretches} CROSS JOIN row "
         f"WHERE row.hpx29 BETWEEN stretch.low AND stretch.high AND {h} <= %(h)s",
