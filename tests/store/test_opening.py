@@ -239,7 +239,7 @@ def test_without_a_mount_table_nothing_is_said(path: Path, monkeypatch: pytest.M
         assert store.remarks == ()
 
 
-def test_connections_hold_what_the_store_promises(scene: Any) -> None:
+def test_connections_hold_what_the_store_promises(scene: Any, path: Path) -> None:
     for name, value in {"foreign_keys": 1, "synchronous": 1, "journal_mode": "wal"}.items():
         assert scene.store.frame(f"PRAGMA {name}").iloc[0, 0] == value
     # milliseconds
