@@ -6,6 +6,7 @@ turned away, so that no page of somebody else's can read it through the user's b
 
 from __future__ import annotations
 
+import importlib
 import re
 import secrets
 import socket
@@ -148,7 +149,10 @@ def guarded(app: App) -> App:
 
 def _is_here(scope: Scope) -> bool:
     hosts = [value.decode("latin-1") for name, value in scope["headers"] if name == b"host"]
-    return len(hosts) == 1 and urlsplit(f"//{hosts[0]}").hostname in _HERE
+    try:
+        return len(hosts) == 1 and urlsplit(f"//{hosts[0]}").hostname in _HERE
+    except ValueError:
+        return False
 
 
 def bound_socket(port: int) -> socket.socket:
@@ -168,6 +172,8 @@ def bound_socket(port: int) -> socket.socket:
     made.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
     try:
         made.bind((HOST, port))
+        # from now on a browser waits for the page instead of being refused
+        made.listen()
     except OSError as fault:
         made.close()
         raise ConfigurationError(
@@ -195,6 +201,9 @@ def serve(path: Path, listening: socket.socket) -> None:
         raise ConfigurationError(
             "browsing needs Datasette, which is not installed; pip install 'blankfield[browse]'"
         ) from None
+    # with rich there, it would print every local variable of every question that has a mistake in it
+    # (asked for by name after the application, which registers its parts in an order of its own)
+    vars(importlib.import_module("datasette.handle_exception"))["rich"] = None
     plugin = _Plugin(hookimpl)
     pm.register(plugin, name="blankfield")
     try:
