@@ -13,9 +13,10 @@ import numpy as np
 from xmatch.assumptions import Assumptions
 from xmatch.catalogs.model import Catalog
 from xmatch.flux.physical import observed_flux_cgs
-from xmatch.limits.coverage import covered_fraction
+from xmatch.limits.coverage import SECTORS, Contains, covered_fraction, sides_with_rows
 from xmatch.limits.depth import limit_for_band
 from xmatch.limits.hiding import raise_limit
+from xmatch.limits.pointings import exposures
 from xmatch.limits.pulses import (
     contains_whole_pulse_probability,
     overlaps_pulse_probability,
@@ -29,6 +30,7 @@ from xmatch.records import (
     Finding,
     Limit,
     Outcome,
+    Pointings,
     Quantity,
     ReplyStatus,
     Rows,
@@ -38,6 +40,9 @@ from xmatch.records import (
 )
 
 COVERED = 1.0 - 1.0e-9
+ROWS_A_SIDE = 3
+"""Rows in each of eight directions that show a survey reaching a place (our choice: by chance a void of that size
+beside a survey's edge would have to hold none of some 24 rows)."""
 _FAILED = {
     ReplyStatus.TRUNCATED: Outcome.TRUNCATED,
     ReplyStatus.UNANSWERED: Outcome.UNANSWERED,
@@ -60,6 +65,12 @@ class Evidence:
     age_s: float | None
     complete: bool = True
     """Whether every table that may hold rows has a whole answer."""
+    logs: tuple[Search, ...] = ()
+    """The search of the observation log, for a mission that points."""
+    pointings: Pointings | None = None
+    """What the log answered; None without an answer."""
+    contains: Contains | None = None
+    """Says which positions the catalog looked at, from the log or a fetched footprint."""
 
 
 def findings(target: Target, evidence: Sequence[Evidence], assumptions: Assumptions) -> tuple[Finding, ...]:
@@ -101,7 +112,7 @@ def _finding(
 ) -> Finding:
     catalog = item.catalog
     k = assumptions.compatible_sigma
-    fraction = covered_fraction(target.position, catalog.coverage, k)
+    fraction = covered_fraction(target.position, catalog.coverage, k, item.contains)
     base = Finding(
         catalog_id=catalog.id,
         title=catalog.title,
@@ -109,7 +120,7 @@ def _finding(
         release=catalog.release,
         outcome=Outcome.UNANSWERED,
         why="not asked yet: nothing in the store answers, and asking was not allowed",
-        searches=item.searches + ((item.failed,) if item.failed is not None else ()),
+        searches=item.searches + item.logs + ((item.failed,) if item.failed is not None else ()),
         coverage_fraction=fraction,
         age_s=item.age_s,
     )
@@ -117,13 +128,11 @@ def _finding(
         if fraction == 0.0:
             # nothing follows from such an answer anyway, so a failure to get it takes nothing away
             unread = f"; the archive gave no usable answer either ({item.failed.detail})" if item.failed else ""
-            return replace(
-                base, outcome=Outcome.NOT_COVERED, why=f"outside the footprint ({_footprint(catalog)}){unread}"
-            )
+            return replace(base, outcome=Outcome.NOT_COVERED, why=f"{_outside(item)}{unread}")
         if item.failed is not None:
             return replace(base, outcome=_FAILED[item.failed.status], why=item.failed.detail)
         return base
-    word, why = _position_says(item, own, all_weighed, fraction, assumptions)
+    word, why = _position_says(target, item, own, all_weighed, fraction, assumptions)
     limits: tuple[Limit, ...] = ()
     if word.permits_limit and not catalog.is_object_list:
         limits, raised = _limits(target, item, own, fraction, word, assumptions)
@@ -152,6 +161,7 @@ def _with_flux(candidate: Candidate) -> Candidate:
 
 
 def _position_says(
+    target: Target,
     item: Evidence,
     own: Weighed,
     all_weighed: Mapping[str, Weighed],
@@ -168,10 +178,29 @@ def _position_says(
     if catalog.is_object_list:
         return Outcome.COVERAGE_UNKNOWN, f"no listed object at the position{_nearest(item, own)}; a list proves nothing"
     if fraction == 0.0:
-        why = f"outside the footprint ({_footprint(catalog)})"
-        if n:
+        why = _outside(item)
+        if n and catalog.log is None:
             why += f", yet the archive returned {n} rows around it: the footprint in the catalog file needs a check"
         return Outcome.NOT_COVERED, why
+    surrounded = item.rows is not None and _surrounded(target, item.rows, own, assumptions)
+    if fraction is None and surrounded and catalog.log is None:
+        return Outcome.BLANK, (
+            f"{n} rows on all sides of the position show that the catalog reaches here (its footprint was not fetched), none "
+            f"compatible with it{_nearest(item, own)}{_fast(item, own)}"
+        )
+    if fraction is None and catalog.log is not None:
+        return Outcome.COVERAGE_UNKNOWN, (
+            f"no row at the position, but its observation log did not answer{_log_detail(item)}: nothing shows that it "
+            "looked here"
+        )
+    if catalog.log is not None and fraction is not None:
+        seen = _exposed(target, item)
+        if fraction < COVERED:
+            return (
+                Outcome.PARTLY_COVERED,
+                f"fields hold {fraction:.0%} of the error region ({seen}); no row in that part",
+            )
+        return Outcome.BLANK, f"{seen}; {n} rows around the position, none compatible with it{_nearest(item, own)}"
     if fraction is None or n == 0:
         why = "no row at the position, and no row around it either: nothing shows that the catalog reaches here"
         return Outcome.COVERAGE_UNKNOWN, why
@@ -181,6 +210,38 @@ def _position_says(
         Outcome.BLANK,
         f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}{_fast(item, own)}",
     )
+
+
+def _surrounded(target: Target, rows: Rows, own: Weighed, assumptions: Assumptions) -> bool:
+    """Whether rows lie on all sides, close enough together that no survey's edge runs between them and the position."""
+    hole = assumptions.compatible_sigma * target.position.sigma_major_arcsec
+    return sides_with_rows(target.position, rows.ra_deg, rows.dec_deg, hole, ROWS_A_SIDE) == SECTORS
+
+
+def _outside(item: Evidence) -> str:
+    if item.pointings is not None and item.catalog.log is not None:
+        return (
+            f"no pointing holds the position: {len(item.pointings)} within reach in its observation log, each field taken "
+            f"as {item.catalog.log.field_radius_arcmin:g} arcmin around its axis"
+        )
+    return f"outside the footprint ({_footprint(item.catalog)})"
+
+
+def _log_detail(item: Evidence) -> str:
+    return f" ({item.logs[0].detail})" if item.logs else ""
+
+
+def _exposed(target: Target, item: Evidence) -> str:
+    """The pointings that hold the position, in words."""
+    assert item.pointings is not None
+    seen = exposures(item.pointings, target.position.ra_deg, target.position.dec_deg)
+    if not seen:
+        return "only the edge of a field reaches the error region"
+    best, total = seen[0], sum(one.exposure_s for one in seen)
+    longest = f"{best.exposure_s / 1e3:.3g} ks at {best.off_axis_arcmin:.1f} arcmin off axis ({best.key})"
+    if len(seen) == 1:
+        return f"one pointing holds the position: {longest}"
+    return f"{len(seen)} pointings hold the position, {total / 1e3:.3g} ks in all, the longest {longest}"
 
 
 def _fast(item: Evidence, own: Weighed) -> str:

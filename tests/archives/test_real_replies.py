@@ -16,7 +16,7 @@ from xmatch.records import Question, ReplyStatus, WantedColumn
 
 PYVO, ASTROQUERY, ASTROPY = (Path(str(module.__file__)).parent for module in (pyvo, astroquery, astropy))
 WHOLE, CUT = ReplyStatus.WHOLE, ReplyStatus.TRUNCATED
-POSITION = {"ra_deg": 0.0, "dec_deg": 0.0, "radius_arcsec": 180.0 * 3600.0}
+POSITION = {"ra_deg": 0.0, "dec_deg": 0.0, "radius_arcsec": 179.0 * 3600.0}
 
 
 def asked(remote_table: str = "", limit: int = 5000, *columns: WantedColumn, **place: float) -> Question:

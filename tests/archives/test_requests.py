@@ -73,7 +73,7 @@ def test_the_plan_shows_the_requests_and_asks_nothing(question, archive):
 
 
 def test_an_unknown_protocol_is_a_fault_of_the_catalog_file(question):
-    with pytest.raises(FactError, match="'gopher' is not known; use one of cone, vizier"):
+    with pytest.raises(FactError, match="'gopher' is not known; use one of cone, file, simbad, tap, vizier"):
         plan_requests([question(protocol="gopher")])
 
 

@@ -12,7 +12,7 @@ import pytest
 from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
 from xmatch.store import opening
 from xmatch.store.opening import network_file_system
-from xmatch.store.place import locate
+from xmatch.store.place import SCHEMA_VERSION, locate
 from xmatch.store.scripts import statements
 from xmatch.store.store import open_store
 
@@ -127,10 +127,10 @@ def test_the_database_of_another_program_is_left_alone(path: Path) -> None:
 def test_a_store_of_another_version_is_left_alone(path: Path, read_only: bool) -> None:
     open_store(path).close()
     other = sqlite3.connect(path)
-    other.execute("PRAGMA user_version = 77")
+    other.execute("PRAGMA user_version = 99")
     other.close()
     before = path.read_bytes()
-    with pytest.raises(StoreVersionError, match=r"schema version 77, .* 2"):
+    with pytest.raises(StoreVersionError, match=rf"schema version 99, .* {SCHEMA_VERSION}"):
         open_store(path, read_only=read_only)
     assert path.read_bytes() == before
 

@@ -225,7 +225,7 @@ def test_an_earlier_database_is_upgraded(server: Any, empty_schema: Any, build: 
         store.put_target(build.TARGET)
     (name,) = re.findall(r"search_path%3D(\w+)", url)
     server.run(
-        f"UPDATE {name}.schema_revision SET version_num = '0001'", f"DROP INDEX {name}.search_asked_at",
+        f"UPDATE {name}.schema_revision SET version_num = '0002'", f"DROP INDEX {name}.search_asked_at",
         f"DROP VIEW {name}.standing_history",
     )  # fmt: skip
     with pytest.raises(StoreVersionError, match="store upgrade"):
@@ -233,7 +233,7 @@ def test_an_earlier_database_is_upgraded(server: Any, empty_schema: Any, build: 
     with pytest.raises(StoreVersionError, match="store upgrade"):
         answer(url, "SELECT 1")
     with open_store(url) as store:
-        assert "from schema version 1 to 2" in store.remarks[0]
+        assert f"from schema version 2 to {schema.SCHEMA_VERSION}" in store.remarks[0]
         assert store.frame("SELECT count(*) AS n FROM standing_history")["n"].tolist() == [0]
         assert store.status()["targets"] == 1
     server.run(f"UPDATE {name}.schema_revision SET version_num = '0077'")

@@ -13,6 +13,7 @@ import pytest
 from xmatch import records
 from xmatch.resources import db_path
 from xmatch.store import schema
+from xmatch.store.schema_lists import CheckVerdict
 from xmatch.store.store import open_store
 
 HEADING = re.compile(r"^### (\w+)$", re.MULTILINE)
@@ -58,7 +59,7 @@ def test_the_readme_lists_the_words(raw: sqlite3.Connection) -> None:
     readme = db_path("README.md").read_text(encoding="utf-8")
     for words in (
         records.Waveband, records.Quantity, records.MagnitudeSystem, records.ReplyStatus, records.Outcome,
-        records.LimitKind, records.LimitMethod, records.StandingWord,
+        records.LimitKind, records.LimitMethod, records.StandingWord, CheckVerdict,
     ):  # fmt: skip
         assert f"| {', '.join(word.value for word in words)} |" in readme, words
 

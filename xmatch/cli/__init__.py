@@ -67,7 +67,9 @@ def main(args: Sequence[str] | None = None) -> None:
     # a short-lived process that imports some hundred modules spends a tenth of a warm answer looking for garbage
     gc.set_threshold(GC_OBJECTS)
     try:
-        group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
+        code = group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
+        if isinstance(code, int) and code:
+            sys.exit(code)  # a command that said so by ctx.exit
     except click.exceptions.Exit as stop:
         sys.exit(stop.exit_code)
     except click.ClickException as fault:

@@ -9,7 +9,7 @@ from collections.abc import Iterator
 import numpy as np
 from sqlalchemy import Connection, func, select
 
-from xmatch.store import cones, schema
+from xmatch.store import cones, schema, schema_lists
 from xmatch.store.cone import PAD_ARCSEC
 from xmatch.store.writing import digest
 
@@ -50,6 +50,11 @@ def _searches(connection: Connection) -> Iterator[str]:
     )
     for key, promised, there in connection.execute(uneven):
         yield f"search {key} should have {promised} rows but {there} are there"
+    copies, listed = schema_lists.list_copy, schema_lists.list_row
+    n = select(func.count()).where(listed.c.list_id == copies.c.list_id).scalar_subquery()
+    for key, promised, there in connection.execute(select(copies.c.list_id, copies.c.n_rows, n)):
+        if promised != there:
+            yield f"list {key} should have {promised} rows but {there} are there"
 
 
 def _positions(connection: Connection) -> Iterator[str]:

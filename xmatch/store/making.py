@@ -5,7 +5,16 @@ from __future__ import annotations
 from sqlalchemy import Connection, delete, insert, inspect, text
 
 from xmatch.resources import db_path
-from xmatch.store.schema import APPLICATION_ID, REVISION, SCHEMA_VERSION, metadata, schema_revision, triggers
+from xmatch.store.schema import (
+    APPEND_ONLY,
+    APPLICATION_ID,
+    REVISION,
+    SCHEMA_VERSION,
+    metadata,
+    schema_revision,
+    triggers,
+)
+from xmatch.store.schema_lists import ADDED_IN_2
 from xmatch.store.scripts import statements
 
 
@@ -18,7 +27,7 @@ def make(connection: Connection) -> None:
 
 def make_views(connection: Connection) -> None:
     """Make triggers, functions and views anew: they hold no data, so an upgrade never has to change one."""
-    for statement in triggers(connection.dialect.name):
+    for statement in triggers(connection.dialect.name, (*APPEND_ONLY, *ADDED_IN_2)):
         connection.exec_driver_sql(statement)
     if connection.dialect.name == "postgresql":
         # one text: plpgsql bodies hold semicolons

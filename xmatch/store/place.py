@@ -9,7 +9,7 @@ from urllib.parse import urlsplit
 from xmatch.errors import ConfigurationError
 
 ENVIRONMENT = "BLANKFIELD_STORE"
-SCHEMA_VERSION = 2
+SCHEMA_VERSION = 3
 """Kept in ``PRAGMA user_version``; an older one is upgraded, a newer one never opened."""
 REVISION = f"{SCHEMA_VERSION:04d}"
 """The same as the last file in ``db/migrations/versions`` names it."""

@@ -389,9 +389,9 @@ APPEND_ONLY = (search, row, flux)
 """Tables in which nothing is ever changed or removed; triggers refuse it."""
 
 
-def triggers(dialect: str = "sqlite") -> list[str]:
-    """Return the statements that keep history from being rewritten."""
-    pairs = [(table.name, what) for table in APPEND_ONLY for what in ("UPDATE", "DELETE")]
+def triggers(dialect: str = "sqlite", tables: Iterable[Table] = APPEND_ONLY) -> list[str]:
+    """Return the statements that keep the history in some tables from being rewritten."""
+    pairs = [(table.name, what) for table in tables for what in ("UPDATE", "DELETE")]
     if dialect == "sqlite":
         return [
             f"CREATE TRIGGER {name}_no_{what.lower()} BEFORE {what} ON {name} "

@@ -19,12 +19,14 @@ from sqlalchemy import text as text_of_sql
 
 from xmatch.assumptions import Assumptions
 from xmatch.errors import StoreError
-from xmatch.records import Band, Floats, Look, ReplyStatus, Rows, Search, Target, Waveband
-from xmatch.store import concluding, near, reading, schema, writing
+from xmatch.records import Band, Floats, Look, Pointings, ReplyStatus, Rows, Search, Target, Waveband
+from xmatch.store import concluding, lists, near, reading, schema, writing
 from xmatch.store.border import bound, integer, json_text, text, utc_text
+from xmatch.store.lists import Checked, ListCopy
 from xmatch.store.near import Dialect, Near, Pairs
 from xmatch.store.opening import connect
 from xmatch.store.place import locate, shown
+from xmatch.store.schema_lists import CheckVerdict
 from xmatch.store.translating import WRITE, translated
 
 if TYPE_CHECKING:
@@ -187,7 +189,14 @@ class Store:
             if done.rowcount != 1:
                 raise StoreError(f"the store knows no run {run_id}; begin_run comes first")
 
-    def put_search(self, run_id: int, target_id: int, reply: Reply, rows: Rows | None) -> Search:
+    def put_search(
+        self,
+        run_id: int,
+        target_id: int,
+        reply: Reply,
+        rows: Rows | None,
+        pointings: tuple[Pointings, Floats] | None = None,
+    ) -> Search:
         """Keep one question, its judged reply and its rows: all of it or nothing.
 
         Parameters
@@ -198,6 +207,8 @@ class Store:
             The reply. A whole one needs its rows, even when there are none.
         rows : Rows or None
             The rows as the door let them in; None for a reply that must not be read.
+        pointings : tuple of Pointings and ndarray, optional
+            For the reply of an observation log: its entries, and the angle of each axis from the target in arcmin.
 
         Raises
         ------
@@ -207,7 +218,38 @@ class Store:
         place = (reply.question.catalog_id, reply.question.release)
         with self._writing() as connection:
             key = self._catalog_keys.get(place) or writing.catalog_key_of(connection, *place)
-            return writing.put_search(connection, run_id, target_id, key, reply, rows)
+            search = writing.put_search(connection, run_id, target_id, key, reply, rows)
+            if pointings is not None:
+                lists.put_pointings(connection, search.search_id, *pointings)
+            return search
+
+    def put_list(self, reply: Reply, rows: Rows) -> int:
+        """Keep one whole list as it was received, with its rows: all of it or nothing; return its key."""
+        with self._writing() as connection:
+            return lists.put_list(connection, reply, rows)
+
+    def put_footprint(
+        self, catalog_id: str, release: str, address: str, asked_at: str, sha256: str, sky_fraction: float, body: bytes
+    ) -> int:
+        """Keep one footprint file; return its key."""
+        with self._writing() as connection:
+            return lists.put_footprint(connection, catalog_id, release, address, asked_at, sha256, sky_fraction, body)
+
+    def put_check(
+        self,
+        catalog_id: str,
+        release: str,
+        fingerprint: str,
+        verdict: CheckVerdict,
+        detail: str,
+        resolved: Mapping[str, str],
+        found: Mapping[str, object],
+    ) -> int:
+        """Keep what a check of a catalog found; return its key."""
+        with self._writing() as connection:
+            return lists.put_check(
+                connection, catalog_id, release, fingerprint, _now(), verdict, detail, resolved, found
+            )
 
     def put_assumptions(self, assumptions: Assumptions) -> str:
         """Keep a set of assumptions; return its content hash."""
@@ -253,6 +295,26 @@ class Store:
         """Return the latest search of any status for each catalog, release and table, oldest first."""
         with self._reading() as connection:
             return reading.last_attempts(connection, target_id)
+
+    def latest_list(self, catalog_id: str, release: str, table_name: str) -> ListCopy | None:
+        """Return the newest copy of a whole list, None where there is none."""
+        with self._reading() as connection:
+            return lists.latest_list(connection, catalog_id, release, table_name)
+
+    def footprints(self) -> dict[tuple[str, str], bytes]:
+        """Return the newest footprint file of each catalog id and address."""
+        with self._reading() as connection:
+            return lists.footprints(connection)
+
+    def pointings_of(self, search_id: int) -> Pointings:
+        """Return the pointings that one search of an observation log brought."""
+        with self._reading() as connection:
+            return lists.pointings_of(connection, search_id)
+
+    def latest_checks(self) -> dict[str, Checked]:
+        """Return the latest check of each catalog id that was answered."""
+        with self._reading() as connection:
+            return lists.latest_checks(connection)
 
     def rows_of(self, search_ids: Sequence[int], bands: Sequence[Band], *, raw: bool = False) -> Rows:
         """Return the rows of some searches of one catalog, in the order of the searches and the replies.

@@ -119,7 +119,8 @@ def upgrade(connection: Connection) -> None:
 
     schema_revision.create(connection, checkfirst=True)
     if connection.execute(schema_revision.select()).first() is None:
-        stamp(connection, "0001")
+        # until version 3 a file knew its version only by a number of SQLite's own
+        stamp(connection, f"{connection.exec_driver_sql('PRAGMA user_version').scalar_one():04d}")
     drop_views(connection)
     config = Config()
     config.set_main_option("script_location", str(db_path("migrations")).replace("%", "%%"))
