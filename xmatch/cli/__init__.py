@@ -22,7 +22,9 @@ COMMANDS = {
     "demo": ("xmatch.cli.demo", "The main job on an invented sky: embedded archive, own store, no network."),
     "catalogs": ("xmatch.cli.catalogs", "The registry: which catalogs are asked, and what is known of each."),
     "target": ("xmatch.cli.target", "Write a commented target file, or check one."),
-    "store": ("xmatch.cli.store", "Where the store is and what it holds."),
+    "store": ("xmatch.cli.store", "Where the store is and what it holds; upgrade, back up, check."),
+    "browse": ("xmatch.cli.browse", "The store in a browser: read-only, on this machine only."),
+    "sql": ("xmatch.cli.sql", "Questions of your own to the store in SQL, and ready-made ones."),
 }
 
 
