@@ -25,11 +25,11 @@ import numpy as np
 
 sys.path[:0] = [str(Path(__file__).parents[2]), str(Path(__file__).parents[1] / "store")]
 
-import builders
+import builders  # noqa: E402
 
-from xmatch.records import Rows
-from xmatch.store import cone, cones
-from xmatch.store.store import open_store
+from xmatch.records import Rows  # noqa: E402
+from xmatch.store import cone, cones  # noqa: E402
+from xmatch.store.store import open_store  # noqa: E402
 
 FIELD_DEG = 20.0
 """Rows lie in a square of this side, so that an arcminute holds some of them as in a deep catalog."""
