@@ -296,6 +296,8 @@ def _limits(
     found: list[Limit] = []
     hiding: list[str] = []
     for columns in catalog.bands:
+        if catalog.log is not None and columns.band.depth is None:
+            continue  # neighbours lie in other exposures: they say nothing of this one
         photometry = rows.flux.get(columns.band.name)
         # where a mission pointed, the exposure that holds the position says more than neighbours in other exposures
         exposed = _longest(target, item) if columns.band.depth is not None else None
