@@ -89,6 +89,7 @@ class Distance:
     """A distribution, at evenly spaced cumulative probabilities from ``low_pc`` to ``high_pc``; empty for a range."""
     redshift: float | None = None
     """Set for an object beyond the Galaxy; the distances are then luminosity distances."""
+    redshift_error: float = 0.0
     cosmology: str = ""
 
 
@@ -124,13 +125,13 @@ class Target:
     column_origin: str = ""
     av_mag: float | None = None
     av_origin: str = ""
+    spin: Spin | None = None
+    pulses: tuple[Pulse, ...] = ()
+    note: str = ""
     column_total_cm2: float | None = None
     """Column of the whole line of sight (hydrogen map), a cap."""
     av_total_mag: float | None = None
     """Extinction of the whole line of sight (dust map), a cap."""
-    spin: Spin | None = None
-    pulses: tuple[Pulse, ...] = ()
-    note: str = ""
 
 
 # ------------------------------------------------------------------------------------------------

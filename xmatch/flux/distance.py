@@ -50,7 +50,7 @@ def quantiles_of(distance: Distance, prior: str, quantiles: ArrayLike) -> Floats
     """
     if distance.quantiles_pc:
         table = np.asarray(distance.quantiles_pc, dtype=float)
-        return np.exp(np.interp(quantiles, np.linspace(0.0, 1.0, len(table)), np.log(table)))
+        return np.exp(np.interp(np.asarray(quantiles, dtype=float), np.linspace(0.0, 1.0, len(table)), np.log(table)))
     return distance_quantiles_pc(distance.low_pc, distance.high_pc, prior, quantiles)
 
 
@@ -159,7 +159,9 @@ def from_parallax(
     d = np.geomspace(min(near, 0.5 * far), far, GRID)
     log_p = -0.5 * ((w - 1.0e3 / d) / error_mas) ** 2 + 2.0 * np.log(d) - d / scale_pc
     told = f"parallax {parallax_mas:g} +- {error_mas:g} mas, zero point {zero_point_mas:g}, scale {scale_pc:g} pc"
-    return from_density(d, np.exp(log_p - log_p.max()), f"{told} (Bailer-Jones 2015)" + (f"; {origin}" if origin else ""))
+    return from_density(
+        d, np.exp(log_p - log_p.max()), f"{told} (Bailer-Jones 2015)" + (f"; {origin}" if origin else "")
+    )
 
 
 def parallax_mode_pc(parallax_mas: float, error_mas: float, scale_pc: float = SCALE_LENGTH_PC) -> float:
@@ -194,7 +196,9 @@ def from_models(values_pc: Sequence[float], names: Sequence[str], scatter_ln: fl
     """
     values = np.asarray(values_pc, dtype=float)
     if not (len(values) and np.all((values > 0.0) & np.isfinite(values)) and scatter_ln > 0.0):
-        raise RangeError(f"model distances {list(values_pc)} pc with scatter {scatter_ln} are not allowed; above 0 is needed")
+        raise RangeError(
+            f"model distances {list(values_pc)} pc with scatter {scatter_ln} are not allowed; above 0 is needed"
+        )
     log_d = np.linspace(np.log(values.min()) - 5.0 * scatter_ln, np.log(values.max()) + 5.0 * scatter_ln, 4001)
     per_log = np.exp(-0.5 * ((log_d[:, None] - np.log(values)) / scatter_ln) ** 2).sum(axis=1)
     told = ", ".join(f"{name} {value / 1.0e3:.2f} kpc" for name, value in zip(names, values, strict=True))
@@ -232,7 +236,7 @@ def at_redshift(z: float, cosmology: str = COSMOLOGIES[0], error: float = 0.0, o
         raise RangeError(f"redshift {z} +- {error} is not allowed; 0 <= error < z is needed")
     low, high = (luminosity_distance_pc(value, cosmology) for value in (z - error, z + error))
     told = f"redshift {z:g}, {cosmology}" + (f"; {origin}" if origin else "")
-    return Distance(low, high, told, redshift=z, cosmology=cosmology)
+    return Distance(low, high, told, redshift=z, redshift_error=error, cosmology=cosmology)
 
 
 def k_factor_density(z: ArrayLike, index: ArrayLike) -> Floats:

@@ -10,8 +10,8 @@ from xmatch.assumptions import Assumptions
 from xmatch.constants import C_CM_S, KEV_HZ
 from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_through_all
 from xmatch.flux.column import DEFAULT_RELATION, column_from_dm_cm2, column_per_av_cm2
-from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag
 from xmatch.flux.distance import AS_GIVEN, quantiles_of
+from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag
 from xmatch.flux.luminosity import luminosity_erg_s
 from xmatch.flux.magnitudes import nu_f_nu_cgs, to_flux_density_jy
 from xmatch.flux.spectra import PowerLaw, flux_density_jy

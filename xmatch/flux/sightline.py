@@ -60,7 +60,9 @@ def at_distance(
         raise RangeError(f"{known:g} out to {known_at_pc:g} pc is not allowed; 0 or more, out to a distance above 0")
     whole = float(growth_pc(known_at_pc, latitude_deg, height_pc))
     if not np.isfinite(whole):
-        raise RangeError(f"at latitude {latitude_deg} deg a total cannot be shared out over distance; give it at a distance")
+        raise RangeError(
+            f"at latitude {latitude_deg} deg a total cannot be shared out over distance; give it at a distance"
+        )
     return known * growth_pc(dist_pc, latitude_deg, height_pc) / whole
 
 
