@@ -21,6 +21,7 @@ MAY_IMPORT = {
     "electron_density": GROUND,
     "distance_keys": GROUND | PURE | {"position", "keys", "electron_density"},
     "target": GROUND | PURE | {"position", "keys", "distance_keys"},
+    "convert": GROUND | PURE,
     "classes": GROUND | PURE,
     "catalogs": GROUND | PURE,
     "store": GROUND | {"resources", "__init__"},

@@ -13,6 +13,7 @@ from numpy.typing import ArrayLike
 
 from xmatch.errors import RangeError
 from xmatch.flux.luminosity import distance_quantiles_pc
+from xmatch.flux.spectra import Spectrum
 from xmatch.records import Distance, Floats
 
 AS_GIVEN = "as given with the target"
@@ -253,6 +254,15 @@ def k_factor_band(z: ArrayLike, photon_index: ArrayLike) -> Floats:
     (1 + z)^(photon index - 2) (Hogg et al. 2002, arXiv:astro-ph/0210394).
     """
     return (1.0 + _redshift(z)) ** (np.asarray(photon_index, dtype=float) - 2.0)
+
+
+def k_factor_shape(z: float, spectrum: Spectrum, band_kev: tuple[float, float]) -> float:
+    """The same as :func:`k_factor_band` for any spectrum, given as observed.
+
+    The light of the rest-frame band arrives at energies lower by 1 + z (Hogg et al. 2002, arXiv:astro-ph/0210394).
+    """
+    low, high = (edge / (1.0 + float(_redshift(z))) for edge in band_kev)
+    return float(spectrum.band_integral(low, high) / spectrum.band_integral(*band_kev))
 
 
 def _redshift(z: ArrayLike) -> Floats:

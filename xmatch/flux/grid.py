@@ -9,7 +9,7 @@ from numpy.typing import ArrayLike
 
 from xmatch.errors import RangeError
 from xmatch.flux.absorption import transmitted_fraction
-from xmatch.flux.distance import k_factor_band, k_factor_density
+from xmatch.flux.distance import k_factor_density
 from xmatch.flux.luminosity import luminosity_density_erg_s_hz, luminosity_erg_s, pseudo_luminosity_mjy_kpc2, sphere_cm2
 from xmatch.flux.spectra import Spectrum, radio_band_flux_cgs
 from xmatch.records import Floats
@@ -88,7 +88,7 @@ def limit_grid(
 
 
 def band_luminosities(
-    flux_cgs: ArrayLike, dist_pc: ArrayLike, *, beam_fraction: float, photon_index: float, z: float = 0.0
+    flux_cgs: ArrayLike, dist_pc: ArrayLike, *, beam_fraction: float, k_factor: float = 1.0
 ) -> dict[str, Floats]:
     """Luminosities of a band flux (corrected for absorption), each under its own name.
 
@@ -98,17 +98,15 @@ def band_luminosities(
         They broadcast. With a redshift the distance is the luminosity distance.
     beam_fraction : float
         Omega / 4 pi, in (0, 1].
-    photon_index : float
-        For the K-correction to the same band in the rest frame.
-    z : float
-        Redshift.
+    k_factor : float
+        K-correction to the same band in the rest frame (:func:`xmatch.flux.distance.k_factor_shape`).
 
     Returns
     -------
     dict
         ``band_isotropic_erg_s``: 4 pi d^2 F; ``band_beamed_erg_s``: the same times the beam fraction.
     """
-    isotropic = luminosity_erg_s(flux_cgs, dist_pc) * k_factor_band(z, photon_index)
+    isotropic = luminosity_erg_s(flux_cgs, dist_pc) * k_factor
     return {"band_isotropic_erg_s": isotropic, "band_beamed_erg_s": isotropic * _beam(beam_fraction)}
 
 
@@ -219,4 +217,3 @@ def free_free_depth(nu_hz: ArrayLike, temperature_k: ArrayLike, emission_measure
     if np.any(~(nu_ghz > 0.0)) or np.any(~(t > 0.0)):
         raise RangeError(f"frequency {nu_hz} Hz at {temperature_k} K is not allowed; both must be above 0")
     return 8.235e-2 * t**-1.35 * nu_ghz**-2.1 * np.asarray(emission_measure_pc_cm6, dtype=float)
-
