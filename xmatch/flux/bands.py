@@ -82,14 +82,20 @@ class FilterCurve:
             As emitted.
         av_mag : array_like
             0 or more, any shape.
+
+        Returns
+        -------
+        ndarray
+            ``nan`` where the law does not reach the whole of the curve.
         """
         av = np.asarray(av_mag, dtype=float)
         if np.any(~(av >= 0.0)):
             raise RangeError(f"A_V {av_mag} mag is not allowed; it must be 0 or more")
         um, w = self._nodes()
         weight = w / um**2 * spectrum.energy_flux(_kev(um))
+        um, weight = um[weight > 0.0], weight[weight > 0.0]
         ratio = extinction_ratio(um, law=law, r_v=r_v)
-        least = float(np.min(ratio[weight > 0.0]))
+        least = float(np.min(ratio))
         through = 10.0 ** (-0.4 * np.multiply.outer(av, ratio - least)) @ (weight / weight.sum())
         return av * least - 2.5 * np.log10(through)
 

@@ -25,6 +25,8 @@ SCALE_LENGTH_PC = 1350.0
 """Scale length of the space density along the line of sight (Bailer-Jones 2015, PASP 127, 994; value from memory)."""
 FARTHEST_SCALES = 30.0
 """Where a parallax posterior is cut, in scale lengths: e^-30 of the prior is left."""
+MOST_NEGATIVE_SIGMA = 5.0
+"""How far below zero a parallax may lie and still be chance (common practice, no source)."""
 GRID = 40_000
 MODEL_SCATTER_LN = 0.4
 """Log-normal scatter about one electron-density model, natural logarithm (common practice, no source)."""
@@ -153,8 +155,13 @@ def from_parallax(
             "scale must be above 0"
         )
     w = parallax_mas - zero_point_mas
+    if w < -MOST_NEGATIVE_SIGMA * error_mas:
+        raise RangeError(
+            f"parallax {w:g} +- {error_mas:g} mas lies more than {MOST_NEGATIVE_SIGMA:g} sigma below zero, where no distance "
+            "explains it; check the zero point and the error"
+        )
     near = 1.0e3 / (max(w, 0.0) + 12.0 * error_mas)  # 12 sigma: nothing is left nearer than that
-    far = FARTHEST_SCALES * scale_pc
+    far = max(FARTHEST_SCALES * scale_pc, 4.0 * parallax_mode_pc(w, error_mas, scale_pc))
     if w - 12.0 * error_mas > 0.0:
         far = 1.0e3 / (w - 12.0 * error_mas)
     d = np.geomspace(min(near, 0.5 * far), far, GRID)

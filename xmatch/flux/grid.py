@@ -208,12 +208,3 @@ def _beam(fraction: float) -> float:
     if not 0.0 < fraction <= 1.0:
         raise RangeError(f"beam fraction {fraction} is not allowed; Omega / 4 pi lies in (0, 1]")
     return fraction
-
-
-def free_free_depth(nu_hz: ArrayLike, temperature_k: ArrayLike, emission_measure_pc_cm6: ArrayLike) -> Floats:
-    """Optical depth of ionised gas: 8.235e-2 T^-1.35 nu_GHz^-2.1 EM (Mezger & Henderson 1967, ApJ 147, 471)."""
-    nu_ghz = np.asarray(nu_hz, dtype=float) / 1.0e9
-    t = np.asarray(temperature_k, dtype=float)
-    if np.any(~(nu_ghz > 0.0)) or np.any(~(t > 0.0)):
-        raise RangeError(f"frequency {nu_hz} Hz at {temperature_k} K is not allowed; both must be above 0")
-    return 8.235e-2 * t**-1.35 * nu_ghz**-2.1 * np.asarray(emission_measure_pc_cm6, dtype=float)
