@@ -12,6 +12,7 @@ import pytest
 from checking import rows, tolerance
 from scipy.integrate import quad
 
+from xmatch import electron_density
 from xmatch.catalogs import load_catalogs
 from xmatch.constants import KPC_CM
 from xmatch.flux import (
@@ -273,3 +274,10 @@ def test_random_band_integrals_against_a_finer_quadrature(n: int) -> None:
         mine = float(absorption.transmitted_fraction(spectrum, low, high, n_h))
         worst = max(worst, abs(mine / expected - 1.0))
     assert 0.0 < worst < 1e-6
+
+
+# mwprop 2.0.5 (Cordes & Lazio 2002, arXiv:astro-ph/0207156; Ocker & Cordes 2026, ApJ 1002, 3): distances of DM 273.5 at l 22.153, b
+# -2.063, and that each answers as itself when both are asked at once
+def test_electron_density_models_side_by_side() -> None:
+    found = electron_density.distances_pc(22.153, -2.063, 273.5, ["NE2025", "NE2001"])
+    assert found == pytest.approx([5211.3, 4869.3], abs=20.0)

@@ -24,7 +24,9 @@ COMMANDS = {
     "target": ("xmatch.cli.target", "Write a commented target file, or check one."),
     "convert": ("xmatch.cli.convert", "One flux in every other term, with every assumption printed."),
     "luminosity": ("xmatch.cli.luminosity", "Luminosities of a target's pulses and fluxes over its distances."),
-    "store": ("xmatch.cli.store", "Where the store is and what it holds."),
+    "store": ("xmatch.cli.store", "Where the store is and what it holds; upgrade, back up, check."),
+    "browse": ("xmatch.cli.browse", "The store in a browser: read-only, on this machine only."),
+    "sql": ("xmatch.cli.sql", "Questions of your own to the store in SQL, and ready-made ones."),
 }
 
 
@@ -67,7 +69,9 @@ def main(args: Sequence[str] | None = None) -> None:
     # a short-lived process that imports some hundred modules spends a tenth of a warm answer looking for garbage
     gc.set_threshold(GC_OBJECTS)
     try:
-        group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
+        code = group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
+        if isinstance(code, int) and code:
+            sys.exit(code)  # a command that said so by ctx.exit
     except click.exceptions.Exit as stop:
         sys.exit(stop.exit_code)
     except click.ClickException as fault:

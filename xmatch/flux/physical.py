@@ -11,7 +11,7 @@ from xmatch.constants import C_CM_S, KEV_HZ
 from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_through_all
 from xmatch.flux.column import DEFAULT_RELATION, column_from_dm_cm2, column_per_av_cm2
 from xmatch.flux.distance import AS_GIVEN, quantiles_of
-from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag
+from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag, law_range
 from xmatch.flux.luminosity import luminosity_erg_s
 from xmatch.flux.magnitudes import nu_f_nu_cgs, to_flux_density_jy
 from xmatch.flux.spectra import PowerLaw, flux_density_jy
@@ -153,6 +153,10 @@ def band_transmission(band: Band, assumptions: Assumptions) -> tuple[float, str]
         f"nu F_nu at the pivot; A_V {av:.2f} ({assumptions.av_origin}), {assumptions.extinction_law}, "
         f"R_V {assumptions.r_v:g}, averaged over the band for a flat F_nu"
     )
+    if av > 0.0:
+        low, high = (av * ratio for ratio in law_range(C_CM_S / band.nu_hz / UM_CM))
+        if math.isfinite(low) and high > low:
+            note += f"; published laws give {low:.2f} to {high:.2f} mag at the pivot"
     return 10.0 ** (-0.4 * magnitudes), note
 
 
