@@ -185,3 +185,30 @@ def test_bad_input_ends_with_exit_code_2(args: tuple[str, ...]) -> None:
     with pytest.raises(SystemExit) as stop:
         main(args)
     assert stop.value.code == 2
+
+
+def test_a_tabulated_spectrum_comes_from_a_file(tmp_path: Path) -> None:
+    path = tmp_path / "law.txt"
+    path.write_text(
+        "# keV, E N(E)\n" + "".join(f"{e} {e**-0.7!r}\n" for e in (0.1, 0.3, 1.0, 3.0, 15.0)), encoding="utf-8"
+    )
+    call = [
+        "convert",
+        "1e-14 erg s-1 cm-2",
+        "--band",
+        "0.5..2 keV",
+        "--to-band",
+        "2..10 keV",
+        "--column",
+        "4e21",
+        "--json",
+    ]
+    (table,) = json.loads(told(*call, "--spectrum-file", str(path))).values()
+    (law,) = json.loads(told(*call, "--photon-index", "1.7")).values()
+    assert table["values"] == pytest.approx(law["values"], rel=1e-6)
+    assert "tabulated at 5 energies" in " ".join(table["assumptions"])
+    path.write_text("1.0 2.0 3.0\n", encoding="utf-8")
+    with pytest.raises(RangeError, match="line 1"):
+        told(*call, "--spectrum-file", str(path))
+    with pytest.raises(RangeError, match="cannot be read"):
+        told(*call, "--spectrum-file", str(tmp_path / "nowhere.txt"))

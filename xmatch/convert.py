@@ -8,6 +8,7 @@ from __future__ import annotations
 import math
 import re
 from dataclasses import dataclass, field, replace
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -22,6 +23,7 @@ from xmatch.flux.column import DEFAULT_RELATION, WILMS, av_from_column_mag, colu
 from xmatch.flux.distance import AS_GIVEN, k_factor_shape, quantiles_of
 from xmatch.flux.extinction import HIGH_UM, LAWS, LOW_UM, MEAN_R_V, UM_CM, extinction_ratio, law_range
 from xmatch.flux.physical import resolve
+from xmatch.flux.shapes import Tabulated
 from xmatch.flux.sightline import scattered
 from xmatch.flux.spectra import PowerLaw, Spectrum, band_ratio, flux_density_jy, radio_scaled
 from xmatch.records import Distance, Floats, Target
@@ -299,8 +301,34 @@ def _blind(through: float, floor: float) -> str:
 
 def describe(spectrum: Spectrum) -> str:
     """A spectrum in words."""
+    if isinstance(spectrum, Tabulated):
+        return f"tabulated at {len(spectrum.e_kev)} energies, {spectrum.e_kev[0]:g} to {spectrum.e_kev[-1]:g} keV"
     name = re.sub(r"(?<=[a-z])(?=[A-Z])", " ", type(spectrum).__name__).lower()
     return f"{name} ({', '.join(f'{key} {value}' for key, value in vars(spectrum).items())})".replace("_", " ")
+
+
+def read_spectrum(path: str | Path) -> Tabulated:
+    """A spectrum from a text file: energy in keV and E N(E) in any unit, one pair a line; ``#`` begins a remark.
+
+    Raises
+    ------
+    RangeError
+        For a file or a line that cannot be read, or a table that is no spectrum.
+    """
+    try:
+        lines = Path(path).read_text(encoding="utf-8").splitlines()
+    except (OSError, UnicodeDecodeError) as fault:
+        raise RangeError(f"spectrum {path} cannot be read ({fault}); give a text file of two columns") from None
+    pairs = []
+    for number, line in enumerate(lines, 1):
+        cells = line.partition("#")[0].replace(",", " ").split()
+        if cells:
+            try:
+                energy, value = (float(cell) for cell in cells)
+            except ValueError:
+                raise RangeError(f"{path}, line {number}: {line[:40]!r} is not two numbers; mend it") from None
+            pairs.append((energy, value))
+    return Tabulated(tuple(e for e, _ in pairs), tuple(v for _, v in pairs))
 
 
 def plain(value: Any) -> Any:

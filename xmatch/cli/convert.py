@@ -13,6 +13,7 @@ ASSUMPTION_OPTIONS = (
     click.option("--photon-index", type=float, metavar="INDEX", help="Power law, of this photon index (default 2)."),
     click.option("--blackbody", type=float, metavar="KEV", help="Blackbody of this temperature kT instead."),
     click.option("--bremsstrahlung", type=float, metavar="KEV", help="Thermal bremsstrahlung of this kT instead (Gaunt factor 1)."),
+    click.option("--spectrum-file", type=click.Path(), metavar="FILE", help="A table instead: energy in keV and E N(E), one pair a line."),
     click.option("--radio-index", "index", type=float, default=-1.6, show_default=True, help="S ~ nu^INDEX of a flux density."),
     click.option("--integrate", metavar="LO..HI UNIT", help="Integrate a flux density over this range, such as '10..10000 MHz'."),
     click.option("--column", "column_cm2", type=float, metavar="CM-2", help="Equivalent hydrogen column."),
@@ -77,16 +78,19 @@ def command(
 
 def ask(flux: str, distance: Any, given: dict[str, Any]) -> Ask:
     """The question that the options make."""
-    from xmatch.convert import Ask
+    from xmatch.convert import Ask, read_spectrum
     from xmatch.errors import ConfigurationError
     from xmatch.flux.spectra import Blackbody, PowerLaw, Spectrum, ThermalBremsstrahlung
 
     given = dict(given)
+    table = given.pop("spectrum_file")
     shapes = [given.pop(name) for name in ("photon_index", "blackbody", "bremsstrahlung")]
-    if sum(value is not None for value in shapes) > 1:
+    if sum(value is not None for value in [table, *shapes]) > 1:
         raise ConfigurationError(
-            "--photon-index, --blackbody and --bremsstrahlung exclude each other; give one of them"
+            "--photon-index, --blackbody, --bremsstrahlung and --spectrum-file exclude each other; give one of them"
         )
+    if table is not None:
+        given["spectrum"] = read_spectrum(table)
     kinds: tuple[type[Spectrum], ...] = (PowerLaw, Blackbody, ThermalBremsstrahlung)
     for kind, value in zip(kinds, shapes, strict=True):
         if value is not None:
