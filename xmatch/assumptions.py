@@ -58,6 +58,10 @@ class Assumptions:
     """Where the column came from, in words."""
     column_scatter_dex: float = 0.3
     """Log-normal scatter of the column (factor 2: He, Ng & Kaspi 2013, ApJ 768, 64)."""
+    column_total_cm2: float | None = None
+    """Column of the whole line of sight, which no draw exceeds; None = not given."""
+    av_total_mag: float | None = None
+    """Extinction of the whole line of sight, which no draw exceeds; None = not given."""
     av_mag: float | None = None
     """Visual extinction; None = derived from the column, see av_origin."""
     av_origin: str = ""

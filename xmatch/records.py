@@ -78,11 +78,19 @@ class Position:
 
 @dataclass(frozen=True)
 class Distance:
-    """Allowed distance range in parsec."""
+    """Allowed distance range in parsec, or a whole distribution."""
 
     low_pc: float
     high_pc: float
     origin: str = ""
+    prior: str = ""
+    """How the range is filled; empty for that of the assumptions."""
+    quantiles_pc: tuple[float, ...] = ()
+    """A distribution, at evenly spaced cumulative probabilities from ``low_pc`` to ``high_pc``; empty for a range."""
+    redshift: float | None = None
+    """Set for an object beyond the Galaxy; the distances are then luminosity distances."""
+    redshift_error: float = 0.0
+    cosmology: str = ""
 
 
 @dataclass(frozen=True)
@@ -120,6 +128,10 @@ class Target:
     spin: Spin | None = None
     pulses: tuple[Pulse, ...] = ()
     note: str = ""
+    column_total_cm2: float | None = None
+    """Column of the whole line of sight (hydrogen map), a cap."""
+    av_total_mag: float | None = None
+    """Extinction of the whole line of sight (dust map), a cap."""
 
 
 # ------------------------------------------------------------------------------------------------

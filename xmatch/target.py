@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import difflib
-import json
 import math
 import tomllib
 from collections.abc import Iterable, Sequence
@@ -12,18 +11,23 @@ from typing import Any
 
 from xmatch import position as read
 from xmatch.constants import YR_S
+from xmatch.distance_keys import DISTANCE_KEYS, distance_section, parse_known_distance, written_distance
 from xmatch.errors import InputError, TargetError
-from xmatch.records import Distance, Position, Pulse, Spin, Target
+from xmatch.keys import digits, toml_text
+from xmatch.keys import number as _number
+from xmatch.keys import text as _text
+from xmatch.records import Position, Pulse, Spin, Target
 
+ABSORPTION_KEYS = ("column_cm2", "column_origin", "av_mag", "av_origin", "column_total_cm2", "av_total_mag")
 SECTIONS = {
     "target": ("name", "note"),
     "position": (
         "ra", "dec", "ra_deg", "dec_deg", "epoch", "error_arcsec", "error_major_arcsec", "error_minor_arcsec",
         "error_angle_deg", "error_level",
     ),
-    "distance": ("low", "high", "low_kpc", "high_kpc", "origin"),
+    "distance": DISTANCE_KEYS,
     "dispersion": ("dm_pc_cm3",),
-    "absorption": ("column_cm2", "column_origin", "av_mag", "av_origin"),
+    "absorption": ABSORPTION_KEYS,
     "spin": (
         "period_s", "derivative", "derivative_limit", "period_change_ms", "baseline_yr", "origin", "may_be_orbital",
     ),
@@ -54,6 +58,13 @@ error_level = "1 sigma"     # per axis; or the fraction it holds: "68%", "90%", 
 [distance]                  # a range: every luminosity is given over it
 low = "1.6 kpc"             # pc, kpc, Mpc, ly
 high = "4.1 kpc"
+#prior = "log-uniform"      # how the range is filled; or uniform, volume
+# or, instead of the range, one of these:
+#   value = "5.0 kpc", plus = "1.2 kpc", minus = "0.8 kpc"          a median with its one-sigma errors
+#   parallax_mas = 0.4, parallax_error_mas = 0.1                    its posterior (zero_point_mas, scale_kpc)
+#   samples = "posterior.txt", samples_unit = "kpc"                 one distance a line, beside this file
+#   models = ["NE2001", "NE2025"]                                   from dm_pc_cm3 (extra 'dm'; model_scatter_ln)
+#   redshift = 0.03, redshift_error = 0.001, cosmology = "Planck18" another galaxy
 origin = "dispersion measure, two electron-density models"
 
 [dispersion]
@@ -64,6 +75,7 @@ dm_pc_cm3 = 148.0
 #column_origin = "X-ray spectrum of a neighbour"
 #av_mag = 1.5
 #av_origin = "dust map"
+#column_total_cm2 = 2e22    # of the whole line of sight, which nothing exceeds; or av_total_mag
 
 [spin]
 period_s = 2711.4
@@ -95,7 +107,7 @@ def read_target(path: str | Path) -> Target:
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as fault:
         raise TargetError(f"{path}: not readable as TOML ({fault}); mend that line") from None
     try:
-        return _from_sections(content, path.stem)
+        return _from_sections(content, path.stem, path.parent)
     except InputError as fault:
         raise type(fault)(f"{path}: {fault}") from None
 
@@ -134,7 +146,7 @@ def build_target(
     return Target(
         name=name or _default_name(ra, dec),
         position=Position(ra, dec, major, minor, angle, _epoch(epoch), stated),
-        distance=Distance(*read.parse_distance(distance), "given on the command line") if distance else None,
+        distance=parse_known_distance(distance) if distance else None,
         dm_pc_cm3=_at_least_zero("dispersion measure", dm, "pc cm^-3"),
         column_cm2=_at_least_zero("column", column, "cm^-2"),
         column_origin="given on the command line" if column is not None else "",
@@ -151,64 +163,47 @@ def write_target(target: Target) -> str:
     Only the frequency of a pulse may differ, in its last binary digit: the file gives it in MHz.
     """
     p = target.position
-    lines = ["[target]", f"name = {_toml(target.name)}"]
+    lines = ["[target]", f"name = {toml_text(target.name)}"]
     if target.note:
-        lines.append(f"note = {_toml(target.note)}")
+        lines.append(f"note = {toml_text(target.note)}")
     lines += [
-        "", "[position]", f"ra_deg = {_digits(p.ra_deg)}", f"dec_deg = {_digits(p.dec_deg)}",
-        f"error_major_arcsec = {_digits(p.sigma_major_arcsec)}", f"error_minor_arcsec = {_digits(p.sigma_minor_arcsec)}",
-        f"error_angle_deg = {_digits(p.angle_deg)}", 'error_level = "1 sigma"',
+        "", "[position]", f"ra_deg = {digits(p.ra_deg)}", f"dec_deg = {digits(p.dec_deg)}",
+        f"error_major_arcsec = {digits(p.sigma_major_arcsec)}", f"error_minor_arcsec = {digits(p.sigma_minor_arcsec)}",
+        f"error_angle_deg = {digits(p.angle_deg)}", 'error_level = "1 sigma"',
     ]  # fmt: skip
     if p.epoch_yr is not None:
-        lines.append(f"epoch = {_digits(p.epoch_yr)}")
+        lines.append(f"epoch = {digits(p.epoch_yr)}")
     if target.distance is not None:
-        d = target.distance
-        lines += [
-            "",
-            "[distance]",
-            f'low = "{_digits(d.low_pc)} pc"',
-            f'high = "{_digits(d.high_pc)} pc"',
-            f"origin = {_toml(d.origin)}",
-        ]
+        lines += ["", *written_distance(target.distance)]
     if target.dm_pc_cm3 is not None:
-        lines += ["", "[dispersion]", f"dm_pc_cm3 = {_digits(target.dm_pc_cm3)}"]
-    if target.column_cm2 is not None or target.av_mag is not None:
+        lines += ["", "[dispersion]", f"dm_pc_cm3 = {digits(target.dm_pc_cm3)}"]
+    if any(getattr(target, key) not in (None, "") for key in ABSORPTION_KEYS):
         lines += ["", "[absorption]"]
-        for key in ("column_cm2", "column_origin", "av_mag", "av_origin"):
+        for key in ABSORPTION_KEYS:
             value = getattr(target, key)
             if value not in (None, ""):
-                lines.append(f"{key} = {_toml(value) if isinstance(value, str) else _digits(value)}")
+                lines.append(f"{key} = {toml_text(value) if isinstance(value, str) else digits(value)}")
     if target.spin is not None:
         s = target.spin
-        lines += ["", "[spin]", f"period_s = {_digits(s.period_s)}"]
+        lines += ["", "[spin]", f"period_s = {digits(s.period_s)}"]
         lines += [
-            f"{key} = {_digits(value)}"
+            f"{key} = {digits(value)}"
             for key, value in (("derivative", s.derivative), ("derivative_limit", s.derivative_limit))
             if value is not None
         ]
-        lines += [f"origin = {_toml(s.derivative_origin)}", f"may_be_orbital = {str(s.may_be_orbital).lower()}"]
+        lines += [f"origin = {toml_text(s.derivative_origin)}", f"may_be_orbital = {str(s.may_be_orbital).lower()}"]
     for pulse in target.pulses:
         lines += [
             "",
             "[[pulses]]",
-            f"frequency_mhz = {_digits(pulse.nu_hz / 1e6)}",
-            f"peak_jy = {_digits(pulse.peak_jy)}",
-            f"width_s = {_digits(pulse.width_s)}",
+            f"frequency_mhz = {digits(pulse.nu_hz / 1e6)}",
+            f"peak_jy = {digits(pulse.peak_jy)}",
+            f"width_s = {digits(pulse.width_s)}",
         ]
     return "\n".join(lines) + "\n"
 
 
-def _toml(text: str) -> str:
-    # JSON's escapes are a subset of those of a TOML basic string; TOML alone forbids a bare DEL
-    return json.dumps(text, ensure_ascii=False).replace("\x7f", "\\u007f")
-
-
-def _digits(value: float) -> str:
-    """All digits of a number; numpy writes its own type into ``repr``, which no TOML reader takes."""
-    return repr(float(value))
-
-
-def _from_sections(content: dict[str, Any], stem: str) -> Target:
+def _from_sections(content: dict[str, Any], stem: str, folder: Path) -> Target:
     for section, value in content.items():
         if section not in SECTIONS:
             raise TargetError(
@@ -228,15 +223,22 @@ def _from_sections(content: dict[str, Any], stem: str) -> Target:
         raise TargetError("section [position] is missing; every target needs one")
     about, dispersion, absorption = (content.get(name, {}) for name in ("target", "dispersion", "absorption"))
     place = _position(content["position"])
+    dm = _at_least_zero("dispersion.dm_pc_cm3", _number("dispersion", dispersion, "dm_pc_cm3"), "pc cm^-3")
     return Target(
         name=_text("target", about, "name") or stem,
         position=place,
-        distance=_distance(content["distance"]) if "distance" in content else None,
-        dm_pc_cm3=_at_least_zero("dispersion.dm_pc_cm3", _number("dispersion", dispersion, "dm_pc_cm3"), "pc cm^-3"),
+        distance=distance_section(content["distance"], folder, place, dm) if "distance" in content else None,
+        dm_pc_cm3=dm,
         column_cm2=_at_least_zero("absorption.column_cm2", _number("absorption", absorption, "column_cm2"), "cm^-2"),
         column_origin=_text("absorption", absorption, "column_origin"),
         av_mag=_at_least_zero("absorption.av_mag", _number("absorption", absorption, "av_mag"), "mag"),
         av_origin=_text("absorption", absorption, "av_origin"),
+        column_total_cm2=_at_least_zero(
+            "absorption.column_total_cm2", _number("absorption", absorption, "column_total_cm2"), "cm^-2"
+        ),
+        av_total_mag=_at_least_zero(
+            "absorption.av_total_mag", _number("absorption", absorption, "av_total_mag"), "mag"
+        ),
         spin=_spin_section(content["spin"]) if "spin" in content else None,
         pulses=tuple(_pulse(entry) for entry in content.get("pulses", [])),
         note=_text("target", about, "note"),
@@ -274,17 +276,6 @@ def _position(section: dict[str, Any]) -> Position:
     return Position(
         ra, dec, major, minor, angle, _epoch(_number("position", section, "epoch")), f"{where}, {error} ({level})"
     )
-
-
-def _distance(section: dict[str, Any]) -> Distance:
-    if {"low", "high"} <= section.keys() and not {"low_kpc", "high_kpc"} & section.keys():
-        low, high = (read.parse_one_distance(_text("distance", section, key)) for key in ("low", "high"))
-    elif {"low_kpc", "high_kpc"} <= section.keys() and not {"low", "high"} & section.keys():
-        ends = [_number("distance", section, key) for key in ("low_kpc", "high_kpc")]
-        low, high = (1.0e3 * (end or 0.0) for end in ends)
-    else:
-        raise TargetError('distance needs low and high with units, such as low = "1.6 kpc", or low_kpc and high_kpc')
-    return Distance(*read.check_distance(low, high), _text("distance", section, "origin"))
 
 
 def _spin_section(section: dict[str, Any]) -> Spin:
@@ -327,29 +318,6 @@ def _pulse(section: dict[str, Any]) -> Pulse:
             raise TargetError(f"pulses.{key} = {value!r} is not allowed; every pulse needs it, above 0")
         values.append(value)
     return Pulse(values[0] * 1.0e6, values[1], values[2])
-
-
-def _number(section: str, content: dict[str, Any], key: str) -> float | None:
-    if key not in content:
-        return None
-    value = content[key]
-    fault = TargetError(f"{section}.{key} = {str(value)[:40]!r} is not allowed; a finite number is needed")
-    if isinstance(value, bool) or not isinstance(value, int | float):
-        raise fault
-    try:
-        number = float(value)
-    except OverflowError:  # TOML integers have no upper end
-        raise fault from None
-    if not math.isfinite(number):
-        raise fault
-    return number
-
-
-def _text(section: str, content: dict[str, Any], key: str) -> str:
-    value = content.get(key, "")
-    if not isinstance(value, str):
-        raise TargetError(f"{section}.{key} = {value!r} is not allowed; write it as text in quotes")
-    return value.strip()
 
 
 def _at_least_zero(what: str, value: float | None, unit: str) -> float | None:

@@ -12,12 +12,25 @@ import pytest
 from checking import rows, tolerance
 from scipy.integrate import quad
 
+from xmatch import electron_density
 from xmatch.catalogs import load_catalogs
 from xmatch.constants import KPC_CM
-from xmatch.flux import absorption, column, extinction, luminosity, magnitudes, spectra
+from xmatch.flux import (
+    absorption,
+    bands,
+    column,
+    distance,
+    extinction,
+    grid,
+    luminosity,
+    magnitudes,
+    radio,
+    shapes,
+    spectra,
+)
 from xmatch.flux.data import make_photoelectric
 
-MODULES = (magnitudes, spectra, absorption, extinction, column, luminosity)
+MODULES = (magnitudes, spectra, absorption, extinction, column, luminosity, distance, grid, radio)
 FUNCTIONS = {name: getattr(module, name) for module in MODULES for name in dir(module)}
 
 
@@ -37,6 +50,9 @@ def value(quantity: str, inputs: dict[str, Any]) -> Any:
         return spectra.ThermalBremsstrahlung(inputs["kt_kev"]).band_integral(*band) / inputs["kt_kev"]
     if quantity == "column per A_V":
         return column.column_per_av_cm2(**inputs)
+    if quantity == "parallax quantiles":
+        posterior = distance.from_parallax(inputs["parallax_mas"], inputs["error_mas"])
+        return distance.quantiles_of(posterior, "log-uniform", inputs["q"])
     return FUNCTIONS[quantity](**inputs)
 
 
@@ -179,3 +195,89 @@ def test_four_pi_d_squared_f_with_astropy_units() -> None:
     assert float(luminosity.luminosity_erg_s(flux, d)) == pytest.approx(theirs, rel=1e-12)
     assert pytest.approx(4 * np.pi * KPC_CM**2 * 1e-26, rel=1e-12) == luminosity.KPC2_MJY_ERG_S_HZ
     assert pytest.approx(1.1964951828635e18, rel=1e-9) == luminosity.KPC2_MJY_ERG_S_HZ  # astropy 8.0.2
+
+
+# Morrison & McCammon 1983, ApJ 270, 119, 0.5-2 keV behind 1e22: 0.1949; Balucinska-Church & McCammon 1992, ApJ 400, 699, with the
+# same kind of abundances 0.1881 (both computed from the tables in astromodels 2.6.0, trapezoid of 2e5 points)
+def test_older_cross_sections_let_less_through() -> None:
+    def passed(n_h: float) -> float:
+        return quad(lambda e: np.exp(-n_h * float(absorption.cross_section_morrison_cm2(e))) / e, 0.5, 2.0, limit=200,
+                    points=[0.532, 0.707, 0.867, 1.303, 1.840], epsabs=0.0, epsrel=1e-9)[0]  # fmt: skip
+
+    old = passed(1e22) / passed(0.0)
+    assert old == pytest.approx(0.1949, abs=2e-4)
+    assert old == pytest.approx(0.1881, rel=0.05)
+    assert float(absorption.transmitted_fraction(spectra.PowerLaw(2.0), 0.5, 2.0, 1e22)) > old
+
+
+# xraydb 4.5.8 (Elam, Ravel & Sieber 2002) x abundances of Wilms, Allen & McCray 2000, computed apart from this table's generator
+@pytest.mark.parametrize(
+    ("kev", "sigma"), [(1.0, 1.7775e-22), (2.0, 0.29720e-22), (3.0, 0.10111e-22), (5.0, 0.024122e-22)]
+)
+def test_cross_section_against_an_element_sum(kev: float, sigma: float) -> None:
+    assert float(absorption.cross_section_cm2(kev)) == pytest.approx(sigma, rel=0.03)
+
+
+# Planck Collaboration 2020, A&A 641, A6: 4 pi D_L^2 F of 1e-14 at z = 1 is 5.518395e43 (computed: astropy 8.0.2)
+def test_a_luminosity_at_redshift_one() -> None:
+    far = distance.at_redshift(1.0)
+    assert float(luminosity.luminosity_erg_s(1e-14, far.low_pc)) == pytest.approx(5.518395e43, rel=1e-5)
+
+
+# Wang & Chen 2019, ApJ 877, 116, table 3 (effective, broad bands): A_G, A_BP, A_RP / A_V = 0.789, 1.002, 0.589. Their curves are for
+# red clump stars; a broad band lies within 0.05 of the law at its effective wavelength when integrated over such a star
+@pytest.mark.parametrize(("name", "ratio"), [("GaiaDR2v2_G", 0.789), ("GaiaDR2v2_BP", 1.002), ("GaiaDR2v2_RP", 0.589)])
+def test_gaia_extinction_of_a_red_clump_star(name: str, ratio: float) -> None:
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        import pyphot
+
+        curve = pyphot.get_library()[name]
+        um, t = curve.wavelength.to("um").value, np.clip(np.asarray(curve.transmit, dtype=float), 0.0, None)
+        theirs_um = float(curve.lpivot.to("um").value)
+    order = np.argsort(um)
+    order = order[t[order] > 1e-3 * t.max()]  # the leak below 0.33 um lies outside their law
+    mine = bands.FilterCurve(tuple(um[order]), tuple(t[order]))
+    assert mine.pivot_um == pytest.approx(theirs_um, rel=2e-3)  # pyphot 2.1.1
+    star = spectra.Blackbody(4800.0 / 1.160452e7)
+    assert float(mine.extinction_mag(star, 1.5, law="Wang & Chen 2019")) / 1.5 == pytest.approx(ratio, abs=0.06)
+
+
+# random spectra, bands and columns against a quadrature of four times the order, cut at every point of the table (adaptive
+# quadrature stops at 1e-6 on its kinks): below 1e-6 wherever 1e-4 gets through; the long round makes 1e4 of them
+@pytest.mark.parametrize("n", [150, pytest.param(10_000, marks=pytest.mark.long)])
+def test_random_band_integrals_against_a_finer_quadrature(n: int) -> None:
+    rng = np.random.default_rng(77)
+    log_table, _ = absorption._table()
+    table = np.exp(log_table)
+    x, w = np.polynomial.legendre.leggauss(12)
+    worst = 0.0
+    for _ in range(n):
+        low, high = np.sort(np.exp(rng.uniform(np.log(0.12), np.log(19.0), 2)))
+        if high < 1.05 * low:
+            continue
+        kind = rng.integers(4)
+        spectrum: spectra.Spectrum = [
+            spectra.PowerLaw(rng.uniform(-1, 4)), spectra.Blackbody(rng.uniform(0.1, 2)),
+            shapes.LogParabola(rng.uniform(1, 3), rng.uniform(0, 1), 1.0), spectra.ThermalBremsstrahlung(rng.uniform(0.5, 10)),
+        ][kind]  # fmt: skip
+        n_h = 10.0 ** rng.uniform(19.0, 24.0)
+        borders = np.unique(
+            np.concatenate([[low], table[(table > low) & (table < high)], [high], [10.0] * int(low < 10.0 < high)])
+        )
+        half, middle = 0.5 * np.diff(borders), 0.5 * (borders[1:] + borders[:-1])
+        e = middle[:, None] + half[:, None] * x
+        weight = half[:, None] * w * spectrum.energy_flux(e)
+        expected = float(np.sum(weight * np.exp(-n_h * absorption.cross_section_cm2(e))) / np.sum(weight))
+        if expected < 1e-4:
+            continue
+        mine = float(absorption.transmitted_fraction(spectrum, low, high, n_h))
+        worst = max(worst, abs(mine / expected - 1.0))
+    assert 0.0 < worst < 1e-6
+
+
+# mwprop 2.0.5 (Cordes & Lazio 2002, arXiv:astro-ph/0207156; Ocker & Cordes 2026, ApJ 1002, 3): distances of DM 273.5 at l 22.153, b
+# -2.063, and that each answers as itself when both are asked at once
+def test_electron_density_models_side_by_side() -> None:
+    found = electron_density.distances_pc(22.153, -2.063, 273.5, ["NE2025", "NE2001"])
+    assert found == pytest.approx([5211.3, 4869.3], abs=20.0)

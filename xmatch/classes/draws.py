@@ -9,7 +9,7 @@ from zlib import crc32
 import numpy as np
 
 from xmatch.assumptions import Assumptions
-from xmatch.flux.luminosity import distance_quantiles_pc
+from xmatch.flux.distance import AS_GIVEN, quantiles_of
 from xmatch.records import Distance, Floats
 
 VARIANT_PRIORS = ("log-uniform", "volume")
@@ -32,7 +32,7 @@ class Variant:
     @property
     def name(self) -> str:
         """In words, as reports print it."""
-        parts = [f"{self.prior} distance"]
+        parts = [f"distance {self.prior}" if self.prior == AS_GIVEN else f"{self.prior} distance"]
         if self.column_factor != 1.0:
             parts.append(f"column x{self.column_factor:g}")
         if self.beam_factor != 1.0:
@@ -50,7 +50,9 @@ def variants(assumptions: Assumptions, *, uses_column: bool, uses_beam: bool) ->
     uses_column, uses_beam : bool
         Whether a test of the class depends on them; otherwise they are not varied.
     """
-    priors = tuple(dict.fromkeys((assumptions.distance_prior, *VARIANT_PRIORS)))
+    priors: tuple[str, ...] = (assumptions.distance_prior,)
+    if assumptions.distance_prior != AS_GIVEN:  # a posterior needs no prior of ours
+        priors = tuple(dict.fromkeys((*priors, *VARIANT_PRIORS)))
     empty = not assumptions.column_cm2 and not assumptions.av_mag
     columns = COLUMN_FACTORS if uses_column and not empty else (1.0,)
     beams = BEAM_FACTORS if uses_beam else (1.0,)
@@ -111,18 +113,21 @@ def draw(
     Notes
     -----
     The column is log-normal about the assumed one with ``column_scatter_dex`` (He, Ng & Kaspi 2013, ApJ 768, 64), and
-    the extinction scales with it: dust and gas come together.
+    the extinction scales with it: dust and gas come together. Neither exceeds the whole Galaxy's, where that is given.
     """
     place = (variant.prior, variant.column_factor)
     if place not in deviates.worked_out:
         factor = variant.column_factor * 10.0 ** (assumptions.column_scatter_dex * deviates.column_sigma)
+        column_cap, av_cap = (
+            np.inf if cap is None else cap for cap in (assumptions.column_total_cm2, assumptions.av_total_mag)
+        )
         dist = np.empty(0)
         if distance is not None:
-            dist = distance_quantiles_pc(distance.low_pc, distance.high_pc, variant.prior, deviates.quantile)
+            dist = quantiles_of(distance, variant.prior, deviates.quantile)
         deviates.worked_out[place] = (
             dist,
-            (assumptions.column_cm2 or 0.0) * factor,
-            (assumptions.av_mag or 0.0) * factor,
+            np.minimum((assumptions.column_cm2 or 0.0) * factor, column_cap),
+            np.minimum((assumptions.av_mag or 0.0) * factor, av_cap),
         )
     dist_pc, column_cm2, av_mag = deviates.worked_out[place]
     return Draws(

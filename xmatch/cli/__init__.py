@@ -22,6 +22,8 @@ COMMANDS = {
     "demo": ("xmatch.cli.demo", "The main job on an invented sky: embedded archive, own store, no network."),
     "catalogs": ("xmatch.cli.catalogs", "The registry: which catalogs are asked, and what is known of each."),
     "target": ("xmatch.cli.target", "Write a commented target file, or check one."),
+    "convert": ("xmatch.cli.convert", "One flux in every other term, with every assumption printed."),
+    "luminosity": ("xmatch.cli.luminosity", "Luminosities of a target's pulses and fluxes over its distances."),
     "store": ("xmatch.cli.store", "Where the store is and what it holds; upgrade, back up, check."),
     "browse": ("xmatch.cli.browse", "The store in a browser: read-only, on this machine only."),
     "sql": ("xmatch.cli.sql", "Questions of your own to the store in SQL, and ready-made ones."),

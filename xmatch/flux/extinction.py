@@ -18,21 +18,29 @@ LOW_UM, HIGH_UM = 0.0913, 31.9
 R_V_LOW, R_V_HIGH = 2.3, 5.6
 """Range of the law (Gordon et al. 2023, ApJ 950, 86)."""
 MEAN_R_V = 3.1
-LAWS = ("Gordon et al. 2023", "Cardelli, Clayton & Mathis 1989")
+LAWS = (
+    "Gordon et al. 2023",
+    "Cardelli, Clayton & Mathis 1989",
+    "Fitzpatrick 1999",
+    "Fitzpatrick et al. 2019",
+    "Wang & Chen 2019",
+)
+"""Extinction curves by name; the first is the default, the others are there for R_V 3.1 (ApJ 950, 86; ApJ 345, 245;
+PASP 111, 63; ApJ 886, 108; ApJ 877, 116)."""
 NODES = 16
 UM_CM = 1.0e-4
 
 
 @lru_cache(maxsize=1)
-def _table() -> tuple[Floats, Floats, Floats, Floats]:
+def _table() -> tuple[Floats, Floats, Floats, dict[str, Floats]]:
     text = resources.files("xmatch.flux").joinpath("data", TABLE).read_text(encoding="utf-8")
     rows = [
         [float(cell) if cell else np.nan for cell in line.split(",")]
         for line in text.splitlines()
         if line and line[0].isdigit()
     ]
-    log_um, a, b, cardelli = np.array(rows, dtype=float).T
-    return np.log(log_um), a, b, cardelli
+    um, a, b, *others = np.array(rows, dtype=float).T
+    return np.log(um), a, b, dict(zip(LAWS[1:], others, strict=True))
 
 
 def extinction_ratio(wavelength_um: ArrayLike, *, law: str = LAWS[0], r_v: float = MEAN_R_V) -> Floats:
@@ -46,7 +54,7 @@ def extinction_ratio(wavelength_um: ArrayLike, *, law: str = LAWS[0], r_v: float
     law : str
         One of :data:`LAWS`.
     r_v : float
-        2.3 to 5.6; only 3.1 for the older law.
+        2.3 to 5.6; only 3.1 for another law than the default.
 
     Raises
     ------
@@ -59,13 +67,25 @@ def extinction_ratio(wavelength_um: ArrayLike, *, law: str = LAWS[0], r_v: float
     """
     if law not in LAWS:
         raise RangeError(f"extinction law {law!r} is not known; there are {', '.join(LAWS)}")
-    if not R_V_LOW <= r_v <= R_V_HIGH or (law == LAWS[1] and r_v != MEAN_R_V):
-        raise RangeError(f"R_V {r_v} is not allowed for {law}; give {R_V_LOW} to {R_V_HIGH} (3.1 for the older law)")
+    if not R_V_LOW <= r_v <= R_V_HIGH or (law != LAWS[0] and r_v != MEAN_R_V):
+        raise RangeError(
+            f"R_V {r_v} is not allowed for {law}; give {R_V_LOW} to {R_V_HIGH} (only 3.1 for a law that is not {LAWS[0]})"
+        )
     um = np.asarray(wavelength_um, dtype=float)
-    log_um, a, b, cardelli = _table()
-    curve = cardelli if law == LAWS[1] else a + b * (1.0 / r_v - 1.0 / MEAN_R_V)
+    log_um, a, b, others = _table()
+    curve = others[law] if law in others else a + b * (1.0 / r_v - 1.0 / MEAN_R_V)
     inside = np.interp(np.log(np.clip(um, LOW_UM, HIGH_UM)), log_um, curve)
     return np.where(um > HIGH_UM, 0.0, np.where(um < LOW_UM, np.nan, inside))
+
+
+def law_range(wavelength_um: float) -> tuple[float, float]:
+    """Lowest and highest A(lambda)/A(V) of all the laws that reach a wavelength, R_V 3.1: their disagreement is a systematic.
+
+    ``nan`` where none does.
+    """
+    ratios = np.array([float(extinction_ratio(wavelength_um, law=law)) for law in LAWS])
+    known = ratios[np.isfinite(ratios)]
+    return (float(known.min()), float(known.max())) if len(known) else (np.nan, np.nan)
 
 
 def band_extinction_mag(band: Band, av_mag: ArrayLike, *, law: str = LAWS[0], r_v: float = MEAN_R_V) -> Floats:

@@ -10,8 +10,9 @@ from xmatch.assumptions import Assumptions
 from xmatch.constants import C_CM_S, KEV_HZ
 from xmatch.flux.absorption import HIGH_KEV, LOW_KEV, transmitted_through_all
 from xmatch.flux.column import DEFAULT_RELATION, column_from_dm_cm2, column_per_av_cm2
-from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag
-from xmatch.flux.luminosity import distance_quantiles_pc, luminosity_erg_s
+from xmatch.flux.distance import AS_GIVEN, quantiles_of
+from xmatch.flux.extinction import HIGH_UM, UM_CM, band_extinction_mag, law_range
+from xmatch.flux.luminosity import luminosity_erg_s
 from xmatch.flux.magnitudes import nu_f_nu_cgs, to_flux_density_jy
 from xmatch.flux.spectra import PowerLaw, flux_density_jy
 from xmatch.records import Band, Limit, PhysicalLimit, Quantity, Target, Waveband
@@ -40,7 +41,8 @@ def resolve(target: Target, assumptions: Assumptions) -> Assumptions:
     Notes
     -----
     In order of trust: the user's own; the column from DM (He, Ng & Kaspi 2013, ApJ 768, 64); one from the other with the
-    relation of the abundances in use (Foight et al. 2016, ApJ 826, 66).
+    relation of the abundances in use (Foight et al. 2016, ApJ 826, 66). Nothing exceeds the total of the line of sight,
+    where that is given. A target's own distance prior replaces that of the assumptions.
     """
     per_av = column_per_av_cm2(DEFAULT_RELATION, assumptions.abundances)
     column, column_origin = assumptions.column_cm2, assumptions.column_origin or "set in the assumptions"
@@ -65,7 +67,38 @@ def resolve(target: Target, assumptions: Assumptions) -> Assumptions:
             av, av_origin = column / per_av, f"from the column, {DEFAULT_RELATION}"
         else:
             av, av_origin = 0.0, NO_COLUMN if column_origin == NO_COLUMN else ZERO_COLUMN
-    return assumptions.but(column_cm2=column, column_origin=column_origin, av_mag=av, av_origin=av_origin)
+    column_total, av_total = totals(target, assumptions)
+    if column_total is not None and column > column_total:
+        column, column_origin = column_total, f"the total column: less than {column:.2g} cm^-2 {column_origin}"
+    if av_total is not None and av > av_total:
+        av, av_origin = av_total, f"the total extinction: less than {av:.2f} mag {av_origin}"
+    prior = assumptions.distance_prior
+    if target.distance is not None:
+        prior = AS_GIVEN if target.distance.quantiles_pc else target.distance.prior or prior
+    return assumptions.but(
+        column_cm2=column,
+        column_origin=column_origin,
+        av_mag=av,
+        av_origin=av_origin,
+        column_total_cm2=column_total,
+        av_total_mag=av_total,
+        distance_prior=prior,
+    )
+
+
+def totals(target: Target, assumptions: Assumptions) -> tuple[float | None, float | None]:
+    """Column (cm^-2) and extinction (mag) of the whole line of sight; one from the other where only one is given.
+
+    The relation is that of the abundances in use (Foight et al. 2016, ApJ 826, 66).
+    """
+    column = assumptions.column_total_cm2 if target.column_total_cm2 is None else target.column_total_cm2
+    av = assumptions.av_total_mag if target.av_total_mag is None else target.av_total_mag
+    per_av = column_per_av_cm2(DEFAULT_RELATION, assumptions.abundances)
+    if column is None and av is not None:
+        column = av * per_av
+    elif av is None and column is not None:
+        av = column / per_av
+    return column, av
 
 
 def edges_kev(band: Band) -> tuple[float, float]:
@@ -120,6 +153,10 @@ def band_transmission(band: Band, assumptions: Assumptions) -> tuple[float, str]
         f"nu F_nu at the pivot; A_V {av:.2f} ({assumptions.av_origin}), {assumptions.extinction_law}, "
         f"R_V {assumptions.r_v:g}, averaged over the band for a flat F_nu"
     )
+    if av > 0.0:
+        low, high = (av * ratio for ratio in law_range(C_CM_S / band.nu_hz / UM_CM))
+        if math.isfinite(low) and high > low:
+            note += f"; published laws give {low:.2f} to {high:.2f} mag at the pivot"
     return 10.0 ** (-0.4 * magnitudes), note
 
 
@@ -154,9 +191,7 @@ def physical_limit(limit: Limit, target: Target, assumptions: Assumptions) -> Ph
     luminosity: tuple[float, ...] = ()
     distance: tuple[float, ...] = ()
     if target.distance is not None:
-        d = distance_quantiles_pc(
-            target.distance.low_pc, target.distance.high_pc, assumptions.distance_prior, np.array(QUANTILES)
-        )
+        d = quantiles_of(target.distance, assumptions.distance_prior, np.array(QUANTILES))
         distance = tuple(float(v) for v in d)
         if corrected is not None:
             luminosity = tuple(float(v) for v in luminosity_erg_s(corrected, d))

@@ -31,7 +31,8 @@ class Spectrum(Protocol):
         ...
 
 
-def _band(low: ArrayLike, high: ArrayLike) -> tuple[Floats, Floats]:
+def band_of(low: ArrayLike, high: ArrayLike) -> tuple[Floats, Floats]:
+    """Both edges as arrays, checked: 0 < low < high, else RangeError."""
     a, b = np.asarray(low, dtype=float), np.asarray(high, dtype=float)
     if np.any(~(a > 0.0)) or np.any(~(b > a)):
         raise RangeError(f"band {low} to {high} is not allowed; 0 < low < high is needed")
@@ -40,7 +41,7 @@ def _band(low: ArrayLike, high: ArrayLike) -> tuple[Floats, Floats]:
 
 def power_integral(low: ArrayLike, high: ArrayLike, exponent: ArrayLike) -> Floats:
     """Integral of x^(exponent - 1) between two positive bounds, smooth through exponent 0 (ln(high/low))."""
-    a, b = _band(low, high)
+    a, b = band_of(low, high)
     p = np.asarray(exponent, dtype=float)
     log = np.log(b / a)
     small = np.abs(p * log) < SERIES_BELOW
@@ -106,7 +107,7 @@ class ThermalBremsstrahlung:
 
     def band_integral(self, low_kev: ArrayLike, high_kev: ArrayLike) -> Floats:
         """Energy flux in the band up to the constant of :meth:`energy_flux`; all energies give kT."""
-        a, b = _band(low_kev, high_kev)
+        a, b = band_of(low_kev, high_kev)
         return self.kt_kev * (np.exp(-a / self.kt_kev) - np.exp(-b / self.kt_kev))
 
 
@@ -119,7 +120,7 @@ def gauss_legendre(n: int) -> tuple[Floats, Floats]:
 
 def _quadrature(spectrum: Spectrum, low_kev: ArrayLike, high_kev: ArrayLike) -> Floats:
     """Gauss-Legendre over the logarithm of energy."""
-    a, b = _band(low_kev, high_kev)
+    a, b = band_of(low_kev, high_kev)
     x, w = gauss_legendre(NODES)
     la, lb = np.log(a)[..., None], np.log(b)[..., None]
     e = np.exp(0.5 * (lb - la) * x + 0.5 * (lb + la))
