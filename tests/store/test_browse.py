@@ -42,14 +42,10 @@ class Site:
 
 
 @pytest.fixture(scope="module")
-def site(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Site]:
+def site(nine: Path, tmp_path_factory: pytest.TempPathFactory) -> Iterator[Site]:
     """A demo store, shown by the command in a process of its own."""
-    from xmatch.cli.running import run_look
-    from xmatch.demo.scene import demo_archive, demo_target
-
     path = tmp_path_factory.mktemp("browse") / "demo.sqlite"
-    with demo_archive() as archive:
-        run_look(demo_target(), quiet=True, store=str(path), archives=archive.address)
+    shutil.copy(nine, path)
     top = str(Path(__file__).parent.parent.parent)
     log = path.with_name("log")
     said = log.open("wb")

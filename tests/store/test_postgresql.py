@@ -26,14 +26,8 @@ WRITERS = Path(__file__).parent / "writers.py"
 
 
 @pytest.fixture(scope="module")
-def demo(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    from xmatch.cli.running import run_look
-    from xmatch.demo.scene import demo_archive, demo_target
-
-    path = tmp_path_factory.mktemp("demo") / "demo.sqlite"
-    with demo_archive() as archive:
-        run_look(demo_target(), quiet=True, store=str(path), archives=archive.address)
-    return path
+def demo(nine: Path) -> Path:
+    return nine
 
 
 @pytest.fixture(scope="module")
