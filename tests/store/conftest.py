@@ -97,26 +97,3 @@ def child_environment() -> dict[str, str]:
     inherited = os.environ.get("PYTHONPATH")
     here = str(HERE.parent.parent)
     return os.environ | {"PYTHONPATH": here if not inherited else here + os.pathsep + inherited}
-
-
-NINE = (
-    "2mass-psc", "atnf-psr", "catwise2020", "erass1-main", "gaia-dr3", "nvss", "ps1-dr1", "racs-low", "vlass-ql1",
-)  # fmt: skip
-"""The registry grows; answers worked out by hand stay those of these catalogs."""
-
-
-@pytest.fixture(scope="session")
-def nine(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """The store of a look at the demo's target in nine catalogs. Copy it before changing it."""
-    from xmatch.archives.transport import Transport
-    from xmatch.catalogs import load_catalogs
-    from xmatch.demo.scene import demo_archive, demo_target
-    from xmatch.pipeline import LookOptions, look
-
-    path = tmp_path_factory.mktemp("demo") / "demo.sqlite"
-    registry = load_catalogs()
-    with demo_archive() as archive, open_store(path) as store:
-        transport = Transport(addresses=archive.address)
-        chosen = {name: registry[name] for name in NINE}
-        look(demo_target(), store=store, catalogs=chosen, transport=transport, options=LookOptions())
-    return path

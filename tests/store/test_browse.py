@@ -22,6 +22,7 @@ from typing import Any
 
 import pytest
 from click.testing import CliRunner
+from nine import make_store
 
 from xmatch.cli.browse import command
 from xmatch.errors import ConfigurationError, StoreError
@@ -42,10 +43,10 @@ class Site:
 
 
 @pytest.fixture(scope="module")
-def site(nine: Path, tmp_path_factory: pytest.TempPathFactory) -> Iterator[Site]:
+def site(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Site]:
     """A demo store, shown by the command in a process of its own."""
     path = tmp_path_factory.mktemp("browse") / "demo.sqlite"
-    shutil.copy(nine, path)
+    make_store(path)
     top = str(Path(__file__).parent.parent.parent)
     log = path.with_name("log")
     said = log.open("wb")

@@ -11,6 +11,7 @@ from typing import Any
 
 import pytest
 from click.testing import CliRunner
+from nine import make_store
 
 from xmatch.cli import sql as sql_command
 from xmatch.cli import store as store_command
@@ -26,8 +27,9 @@ WRITERS = Path(__file__).parent / "writers.py"
 
 
 @pytest.fixture(scope="module")
-def demo(nine: Path) -> Path:
-    return nine
+def demo(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    path = tmp_path_factory.mktemp("demo") / "demo.sqlite"
+    return make_store(path)
 
 
 @pytest.fixture(scope="module")

@@ -19,6 +19,7 @@ from typing import Any
 
 import pytest
 from click.testing import CliRunner
+from nine import make_store
 
 from xmatch.cli.sql import command
 from xmatch.constants import PC_CM
@@ -35,8 +36,10 @@ BIG = 2**63 - 1
 
 
 @pytest.fixture(scope="module")
-def demo(nine: Path) -> Path:
-    return nine
+def demo(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """The store of a demo, made once."""
+    path = tmp_path_factory.mktemp("demo") / "demo.sqlite"
+    return make_store(path)
 
 
 def answer(path: Path, sql: str, params: Any = None, **options: Any) -> list[tuple[Any, ...]]:

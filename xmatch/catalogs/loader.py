@@ -143,7 +143,7 @@ class _Reader(Checked):
         if columns.get("positions", "decimal") not in POSITIONS:
             raise self.fault("columns.positions", columns["positions"], f"one of {', '.join(POSITIONS)} is needed")
         mirror = self.section("mirror", top.get("mirror", {}), ("rows_at_least", "source"))
-        if mirror:
+        if "mirror" in top:
             self.need_source("mirror", mirror)
         if "state" in top and top["state"] != NEEDS_CHECK:
             raise self.fault("state", top["state"], f"the only state is {NEEDS_CHECK!r}; leave it out otherwise")
@@ -183,7 +183,7 @@ class _Reader(Checked):
             coverage=self.region("coverage", top.get("coverage")),
             log=self.log(top.get("coverage")),
             state=str(top.get("state", "")),
-            rows_at_least=int(self.number("mirror", mirror, "rows_at_least", low=1)) if mirror else None,
+            rows_at_least=int(self.number("mirror", mirror, "rows_at_least", low=1)) if "mirror" in top else None,
             sexagesimal=columns.get("positions") == "sexagesimal",
             units=self.words("columns", columns, "units"),
             keep=self.texts("columns", columns, "keep"),
@@ -273,7 +273,7 @@ class _Reader(Checked):
         log = self.section(
             where, coverage["log"],
             ("protocol", "address", "table", "geometry", "mode", "key", "ra", "dec", "exposure", "start", "instrument",
-             "field_radius_arcmin", "units", "source"),
+             "field_radius_arcmin", "reference_s", "vignetting_at_edge", "units", "source"),
         )  # fmt: skip
         table: dict[str, Any] = {
             key: log[key] for key in ("protocol", "address", "table", "geometry", "mode", "source") if key in log
@@ -287,6 +287,8 @@ class _Reader(Checked):
             start=self.maybe_text(where, log, "start"),
             instrument=self.maybe_text(where, log, "instrument"),
             field_radius_arcmin=self.number(where, log, "field_radius_arcmin", low=0.1, high=300.0),
+            reference_s=self.number(where, log, "reference_s", low=1.0),
+            vignetting_at_edge=self.number(where, log, "vignetting_at_edge", low=0.01, high=1.0),
             units=self.words(where, log, "units"),
             source=self.need_source(where, log),
         )
