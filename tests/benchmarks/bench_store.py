@@ -31,8 +31,8 @@ from xmatch.records import Rows  # noqa: E402
 from xmatch.store import cone, cones  # noqa: E402
 from xmatch.store.store import open_store  # noqa: E402
 
-FIELD_DEG = 20.0
-"""Rows lie in a square of this side, so that an arcminute holds some of them as in a deep catalog."""
+FIELD_DEG = 4.2
+"""Rows lie in a square of this side: a million of them then are 200 in a cone of 2 arcmin, a dense field."""
 SMALL_ARCSEC, LARGE_ARCSEC = 5.0, 120.0
 NAMES = (
     "hpx29", "search_id", "ordinal", "source_key", "ra_deg", "dec_deg", "sigma_major_arcsec", "sigma_minor_arcsec",

@@ -26,8 +26,8 @@ _ROWS = """
     SELECT catalog.catalog_id, catalog.release, search.table_name, near.search_id, near.ordinal, near.source_key,
            near.ra_deg, near.dec_deg, near.h
     FROM {near} AS near
-    JOIN search ON search.search_id = near.search_id
-    JOIN catalog ON catalog.catalog_key = search.catalog_key
+    {join} search ON search.search_id = near.search_id
+    {join} catalog ON catalog.catalog_key = search.catalog_key
 """
 _H = (
     "power(sin(radians(row.dec_deg - {dec}) / 2.0), 2)"
@@ -52,11 +52,12 @@ def _sqlite() -> Dialect:
         low="json_extract(stretch.value, '$[0]')",
         high="json_extract(stretch.value, '$[1]')",
     )
-    rows = _ROWS.format(near=f"({near})")
+    # CROSS JOIN fixes the order: with statistics the planner would go through all searches first
+    rows = _ROWS.format(near=f"({near})", join="CROSS JOIN")
     wanted = "WITH wanted AS MATERIALIZED (SELECT json_extract(value, '$[0]') AS catalog_key, json_extract(value, '$[1]') AS h FROM json_each(:wanted)) "
     return Dialect(
         within=rows + "WHERE near.h <= :h",
-        within_each=wanted + rows + "JOIN wanted ON wanted.catalog_key = catalog.catalog_key WHERE near.h <= wanted.h",
+        within_each=wanted + rows + "CROSS JOIN wanted ON wanted.catalog_key = catalog.catalog_key WHERE near.h <= wanted.h",
         keys="SELECT catalog_id, catalog_key FROM catalog",
         pairs="SELECT row.search_id, row.ordinal, " + _H.format(dec=":dec", ra=":ra", cos_dec=":cos_dec")
         + " AS h FROM json_each(:stretches) AS stretch CROSS JOIN row WHERE row.hpx29 BETWEEN "
@@ -74,7 +75,7 @@ def _postgresql() -> Dialect:
     near = _NEAR.format(h=h, stretches=stretches, low="stretch.low", high="stretch.high")
     # materialised, because this planner would rather come in by search and read every row of it
     near = f"near AS MATERIALIZED ({near})"
-    rows = _ROWS.format(near="near")
+    rows = _ROWS.format(near="near", join="JOIN")
     wanted = (
         "wanted AS MATERIALIZED (SELECT (part ->> 0)::bigint AS catalog_key, (part ->> 1)::float8 AS h"
         " FROM json_array_elements(%(wanted)s::json) AS part)"
