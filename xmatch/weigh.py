@@ -87,8 +87,9 @@ def findings(target: Target, evidence: Sequence[Evidence], assumptions: Assumpti
         if item.rows is not None and item.complete:
             radius = min(search.radius_arcsec for search in item.searches)
             weighed[item.catalog.id] = weigh(
-                target.position, item.rows, radius_arcsec=radius, assumptions=assumptions, distance_pc=distance_pc
-            )
+                target.position, item.rows, radius_arcsec=radius, assumptions=assumptions, distance_pc=distance_pc,
+                bands=item.catalog.band_list,
+            )  # fmt: skip
     return tuple(_finding(target, item, weighed.get(item.catalog.id), weighed, assumptions) for item in evidence)
 
 

@@ -50,8 +50,11 @@ def downes(p_star: ArrayLike, p_critical: ArrayLike) -> Floats:
     return chance_within(expected)
 
 
-def global_p(p: ArrayLike, trials: int) -> Floats:
-    """Chance that any of ``trials`` independent searches shows one so good (Sidak 1967, JASA 62, 626)."""
+def global_p(p: ArrayLike, trials: float) -> Floats:
+    """Chance that any of ``trials`` independent searches shows one so good (Sidak 1967, JASA 62, 626).
+
+    ``trials`` need not be whole: catalogs that list the same objects count for less than one each.
+    """
     return -np.expm1(trials * np.log1p(-np.asarray(p, dtype=float)))
 
 
