@@ -178,11 +178,11 @@ def search_beside(
     sorted_n, far = n[order], float(reach.max())
     first = np.searchsorted(sorted_n, at_n - far)
     last = np.searchsorted(sorted_n, at_n + far, side="right")
-    hits = np.zeros(n_positions)
-    for i in range(n_positions):
-        near = order[first[i] : last[i]]
-        d = normalised(e[near] - at_e[i], n[near] - at_n[i], xx[near], yy[near], xy[near])
-        hits[i] = np.count_nonzero(d <= k)
+    count = last - first
+    which = np.repeat(np.arange(n_positions), count)  # one entry per position and row of its strip
+    near = order[np.arange(which.size) + np.repeat(first - np.cumsum(count) + count, count)]
+    d = normalised(e[near] - at_e[which], n[near] - at_n[which], xx[near], yy[near], xy[near])
+    hits = np.bincount(which[d <= k], minlength=n_positions)
     n_independent = int(min(independent, n_positions))
     fraction = float(np.mean(hits > 0))
     return Repeated(
