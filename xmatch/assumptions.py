@@ -45,6 +45,8 @@ class Assumptions:
     """Binomial probability below which the repeated search disagrees with the density and replaces it."""
     gradient_p: float = 0.01
     """Rayleigh-test probability below which crowding is said to rise to one side."""
+    together_odds: float = 0.5
+    """Probability from which rows of two catalogs are taken as one object (common practice, no source)."""
     counterpart_odds: float = 0.9
     """Probability of a true match from which a row may be called counterpart (common practice, no source)."""
     counterpart_global_chance: float = 0.01

@@ -59,7 +59,7 @@ def global_p(p: ArrayLike, trials: float) -> Floats:
 
 
 def local_density(separation_arcsec: ArrayLike, inner_arcsec: float, outer_arcsec: float) -> tuple[float, float, int]:
-    """Surface density from the ring between two radii.
+    """Surface density from the ring between two radii; an inner radius below 0 takes the centre in.
 
     Returns
     -------
@@ -68,7 +68,7 @@ def local_density(separation_arcsec: ArrayLike, inner_arcsec: float, outer_arcse
     """
     r = np.asarray(separation_arcsec, dtype=float)
     n = int(np.count_nonzero((r > inner_arcsec) & (r <= outer_arcsec)))
-    area_deg2 = math.pi * (outer_arcsec**2 - inner_arcsec**2) / ARCSEC2_PER_DEG2
+    area_deg2 = math.pi * (outer_arcsec**2 - max(inner_arcsec, 0.0) ** 2) / ARCSEC2_PER_DEG2
     if area_deg2 <= 0.0:
         return math.nan, math.nan, n
     return max(n, 1) / area_deg2, math.sqrt(max(n, 1)) / area_deg2, n

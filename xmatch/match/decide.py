@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -111,6 +111,10 @@ def weigh(
     inner = k * float(np.sqrt(max(float(np.median(own[0])), float(np.median(own[1])))))
     density, error, n_ring = local_density(separation, inner, radius_arcsec)
     around = ring(separation, inner, radius_arcsec)
+    area_deg2 = ring_area_deg2(inner, radius_arcsec)
+    if area_deg2 <= 0.0:  # the error region fills the cone: all rows are field and candidate at once
+        density, error, n_ring = local_density(separation, -1.0, radius_arcsec)
+        around, area_deg2 = ring(separation, -1.0, radius_arcsec), ring_area_deg2(0.0, radius_arcsec)
     notes = [f"{density:.3g} +- {error:.2g} per square degree from {n_ring} rows in the ring"]
     if n_ring < assumptions.density_min_rows:
         notes = [f"density from only {n_ring} rows: {notes[0]}"]
@@ -132,7 +136,7 @@ def weigh(
             "seen is used"
         )
         expected = repeated.expected
-    chance, band = _chance(rows, d, (cxx, cyy, cxy), around, density, ring_area_deg2(inner, radius_arcsec), k, bands)
+    chance, band = _chance(rows, d, (cxx, cyy, cxy), around, density, area_deg2, k, bands)
     q = assumptions.listed_fraction
     f = with_heavy_tail(np.nan_to_num(density_at(d, cxx, cyy, cxy)), assumptions.heavy_tail, radius_arcsec)
     ratio = likelihood_ratio(q, f, density / ARCSEC2_PER_DEG2)
@@ -204,7 +208,7 @@ def _chance(
     """
     within = np.minimum(np.nan_to_num(d, nan=np.inf), k)
     best = max(bands, key=lambda b: _n_listed(rows, b), default=None)
-    if best is None or _n_listed(rows, best) == 0 or area_deg2 <= 0.0:
+    if best is None or _n_listed(rows, best) == 0 or not len(rows):
         return chance_within(expected_in_ellipse(density, *cov, within)), ""
     listed = rows.flux[best.name].value
     as_bright = density_at_least_as_bright(listed, around, area_deg2, best.quantity is Quantity.MAGNITUDE)
@@ -300,16 +304,28 @@ def candidates(weighed: Weighed, rows: Rows, catalog_id: str, bands: Sequence[Ba
             tail=float(weighed.tail[i]),
             chance=float(weighed.chance[i]),
             odds=float(weighed.odds[i]),
-            photometry=tuple(
-                Measured(
-                    band=band,
-                    value=float(rows.flux[band.name].value[i]),
-                    error=float(rows.flux[band.name].error[i]),
-                    is_limit=bool(rows.flux[band.name].is_limit[i]),
-                )
-                for band in bands
-                if band.name in rows.flux and np.isfinite(rows.flux[band.name].value[i])
-            ),
+            photometry=listed_in(rows, i, bands),
         )
         for i in order
     )
+
+
+def listed_in(
+    rows: Rows, index: int, bands: Sequence[Band], flux_cgs: Callable[[float, Band], float | None] | None = None
+) -> tuple[Measured, ...]:
+    """What a row lists, band by band; with ``flux_cgs`` also as observed flux (definition)."""
+    found = []
+    for band in bands:
+        photometry = rows.flux.get(band.name)
+        if photometry is not None and np.isfinite(photometry.value[index]):
+            value = float(photometry.value[index])
+            found.append(
+                Measured(
+                    band=band,
+                    value=value,
+                    error=float(photometry.error[index]),
+                    is_limit=bool(photometry.is_limit[index]),
+                    flux_cgs=None if flux_cgs is None else flux_cgs(value, band),
+                )
+            )
+    return tuple(found)

@@ -9,6 +9,7 @@ from numpy.typing import ArrayLike
 
 from xmatch.constants import ARCSEC2_PER_DEG2
 from xmatch.errors import RangeError
+from xmatch.match.nearby import pairs
 from xmatch.match.separation import normalised
 from xmatch.records import Bools, Floats
 
@@ -174,13 +175,7 @@ def search_beside(
     if independent < least:
         return None
     at_e, at_n = beside(inner, outer, n_positions)
-    order = np.argsort(n, kind="stable")
-    sorted_n, far = n[order], float(reach.max())
-    first = np.searchsorted(sorted_n, at_n - far)
-    last = np.searchsorted(sorted_n, at_n + far, side="right")
-    count = last - first
-    which = np.repeat(np.arange(n_positions), count)  # one entry per position and row of its strip
-    near = order[np.arange(which.size) + np.repeat(first - np.cumsum(count) + count, count)]
+    which, near = pairs(at_n, np.full(n_positions, float(reach.max())), n)
     d = normalised(e[near] - at_e[which], n[near] - at_n[which], xx[near], yy[near], xy[near])
     hits = np.bincount(which[d <= k], minlength=n_positions)
     n_independent = int(min(independent, n_positions))
