@@ -8,6 +8,7 @@ Hipparcos is complete to V = 7.3 at least (ESA SP-1200, vol. 1; value from memor
 
 from __future__ import annotations
 
+import sys
 from dataclasses import dataclass
 from typing import Any
 
@@ -110,7 +111,7 @@ def test_real_stars_are_found_and_hardly_any_is_found_where_none_is(
     false = float(np.mean(matched(hipparcos, gaia, shift_deg=0.25)[0] >= A.counterpart_odds))
     for name, value in (("completeness", completeness), ("of another brightness", wrong), ("false match rate", false)):
         record_property(name, value)
-        print(f"{name} {value:.5f}")
+        sys.stdout.write(f"{name} {value:.5f}\n")  # pytest -rP shows it
     assert bright.sum() > 5_000
     assert completeness > 0.92  # three in four of the others have no Hipparcos star within arcsec: components
     assert wrong < 0.005
@@ -126,7 +127,7 @@ def test_fast_stars_are_found_only_by_their_motion(
         odds, best = matched(hipparcos, gaia, motions=motions)
         shares.append(float(np.mean(np.isin(fast, best[odds >= A.counterpart_odds]))))
     record_property("fast stars found with and without motion", shares)
-    print(f"{fast.size} fast stars: {shares[0]:.3f} found with their motion, {shares[1]:.3f} without")
+    sys.stdout.write(f"{fast.size} fast stars: {shares[0]:.3f} found with their motion, {shares[1]:.3f} without\n")
     assert fast.size > 100
     assert shares[0] > 0.85
     assert shares[1] < 0.05
