@@ -20,6 +20,11 @@ from xmatch.pipeline import LookOptions, look
 from xmatch.records import Look, Outcome, StandingWord
 from xmatch.store.store import Store, open_store
 
+STREET = (
+    "erass1-main", "gaia-dr3", "ps1-dr1", "2mass-psc", "catwise2020", "nvss", "racs-low", "vlass-ql1", "atnf-psr",
+)  # fmt: skip
+"""Nine catalogs of every kind of story; tests/test_registry.py walks the street with all."""
+SHOWN = {name: BUILT_TO_SHOW[name] for name in STREET}
 REMOTE = {
     "gaia-dr3": "I/355/gaiadr3",
     "nvss": "VIII/65/nvss",
@@ -40,7 +45,7 @@ def ask(store: Store, archive: Any, **how: Any) -> Look:
     return look(
         demo_target(),
         store=store,
-        catalogs=load_catalogs(),
+        catalogs={name: catalog for name, catalog in load_catalogs().items() if name in STREET},
         transport=Transport(addresses=archive.address),
         options=LookOptions(**how),
         **clock,
@@ -52,7 +57,7 @@ def outcomes(answer: Look) -> dict[str, Outcome]:
 
 
 def test_each_catalog_shows_what_the_sky_was_built_to_contain(store: Store, archive: Any) -> None:
-    assert outcomes(ask(store, archive)) == BUILT_TO_SHOW
+    assert outcomes(ask(store, archive)) == SHOWN
 
 
 def test_only_the_table_that_holds_the_plane_is_asked(store: Store, archive: Any) -> None:
@@ -143,7 +148,7 @@ def test_a_failing_archive_is_never_a_blank_sky(
     seen = outcomes(answer)
     assert seen[catalog_id] is expected
     assert not [limit for limit in answer.limits if limit.limit.band.catalog_id == catalog_id]
-    rest = {name: word for name, word in BUILT_TO_SHOW.items() if name != catalog_id}
+    rest = {name: word for name, word in SHOWN.items() if name != catalog_id}
     assert {name: seen[name] for name in rest} == rest
 
 

@@ -183,7 +183,7 @@ def conclude(
         standings=standings(target, limits, found, spin, assumptions, load_classes()),
         expected_chance=expected_chance_total(found),
         n_asked=n_asked,
-        n_from_store=sum(search.from_store for item in evidence for search in item.searches),
+        n_from_store=sum(search.from_store for item in evidence for search in (*item.searches, *item.logs)),
         offline=offline,
         remarks=tuple(remarks),
         store=store_name,

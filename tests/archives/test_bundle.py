@@ -124,7 +124,7 @@ def test_what_differs_in_centre_radius_limit_or_protocol_stays_apart(question):
 
 
 @pytest.mark.parametrize(
-    ("n", "per_host", "sizes"), [(36, 6, [6] * 6), (5, 6, [1] * 5), (20, None, [7, 7, 6]), (9, 2, [5, 4])]
+    ("n", "per_host", "sizes"), [(36, 6, [3] * 12), (5, 6, [1] * 5), (20, None, [7, 7, 6]), (9, 2, [3, 3, 3])]
 )
 def test_tables_are_spread_over_the_requests_a_host_allows(question, n, per_host, sizes):
     questions = [question("vizier", catalog_id=f"c{i}", remote_table=f"I/{i}/t") for i in range(n)]

@@ -29,7 +29,7 @@ def test_a_list_is_kept_with_its_bytes_and_rows_and_the_newest_is_handed_out(sce
     copy = store.latest_list(question.catalog_id, question.release, question.table)
     assert (copy.list_id, copy.n_rows, copy.body, copy.asked_at) == (key, 2, b"other", "2026-12-01T00:00:00Z")
     assert store.latest_list(question.catalog_id, "another", question.table) is None
-    counts = store.frame("SELECT list_id, count(*) AS n FROM list_row GROUP BY list_id")
+    counts = store.frame("SELECT list_id, count(*) AS n FROM list_row GROUP BY list_id ORDER BY list_id")
     assert counts["n"].tolist() == [3, 2]
 
 

@@ -158,8 +158,8 @@ def test_the_rows_of_a_search_are_found_without_a_scan_or_a_sort(raw: sqlite3.Co
 def test_the_views_run_on_an_empty_store(raw: sqlite3.Connection) -> None:
     names = [name for (name,) in raw.execute("SELECT name FROM sqlite_master WHERE type = 'view'")]
     assert sorted(names) == [
-        "current_candidate", "current_finding", "current_limit", "current_luminosity_limit", "current_run",
-        "current_search", "current_standing",
-    ]  # fmt: skip
+        "current_candidate", "current_finding", "current_limit", "current_luminosity_limit", "current_row",
+        "current_run", "current_search", "current_standing", "standing_history",
+    ]  # fmt: skip  # fmt: skip
     for name in names:
         assert raw.execute(f"SELECT * FROM {name}").fetchall() == []

@@ -25,6 +25,8 @@ BUILDERS = {
 """One adapter per protocol."""
 LARGEST_BUNDLE = 8
 """Tables in one question (our choice: a failing one must be split and asked again)."""
+ROUNDS = 2
+"""Requests that each place at a host works off, so that slow tables and quick ones even out (our choice; measured)."""
 MIRRORS_FILE = Path(__file__).parent / "mirrors.toml"
 
 
@@ -71,8 +73,8 @@ def jobs_of(questions: Sequence[Question], *, per_host: int | None, bundling: bo
     questions : sequence of Question
         Those of the VizieR form that share address, centre, radius and row limit may go together.
     per_host : int or None
-        How many requests one host gets at a time: tables are spread evenly over as many, so that bundling never makes
-        the host work on fewer than it would allow.
+        How many requests one host gets at a time: tables are spread evenly over twice as many, so that bundling never
+        makes the host work on fewer than it would allow, and slow tables even out.
     bundling : bool
         False for one request per question.
 
@@ -101,7 +103,7 @@ def jobs_of(questions: Sequence[Question], *, per_host: int | None, bundling: bo
 def _parts(group: list[Question], per_host: int | None) -> list[list[Question]]:
     """Parts of nearly equal size; two tables of one name never share a request."""
     n = len(group)
-    size = min(LARGEST_BUNDLE, max(1, -(-n // per_host)) if per_host else LARGEST_BUNDLE)
+    size = min(LARGEST_BUNDLE, -(-n // (ROUNDS * per_host)) if per_host else LARGEST_BUNDLE)
     n_parts = -(-n // size)
     return [group[i::n_parts] for i in range(n_parts)]
 

@@ -143,7 +143,7 @@ class _Reader(Checked):
         if columns.get("positions", "decimal") not in POSITIONS:
             raise self.fault("columns.positions", columns["positions"], f"one of {', '.join(POSITIONS)} is needed")
         mirror = self.section("mirror", top.get("mirror", {}), ("rows_at_least", "source"))
-        if mirror:
+        if "mirror" in top:
             self.need_source("mirror", mirror)
         if "state" in top and top["state"] != NEEDS_CHECK:
             raise self.fault("state", top["state"], f"the only state is {NEEDS_CHECK!r}; leave it out otherwise")
@@ -183,7 +183,7 @@ class _Reader(Checked):
             coverage=self.region("coverage", top.get("coverage")),
             log=self.log(top.get("coverage")),
             state=str(top.get("state", "")),
-            rows_at_least=int(self.number("mirror", mirror, "rows_at_least", low=1)) if mirror else None,
+            rows_at_least=int(self.number("mirror", mirror, "rows_at_least", low=1)) if "mirror" in top else None,
             sexagesimal=columns.get("positions") == "sexagesimal",
             units=self.words("columns", columns, "units"),
             keep=self.texts("columns", columns, "keep"),

@@ -305,7 +305,9 @@ class _Handler(BaseHTTPRequestHandler):
     def send(self, status: int, body: bytes, content_type: str, headers: dict[str, str], faults: list[Fault]) -> None:
         closing = self.server.archive.closing
         kinds = {fault.kind: fault for fault in faults}
-        if "delay" in kinds and closing.wait(kinds["delay"].seconds):
+        # tables of one request are worked off one after the other
+        delay_s = sum(fault.seconds for fault in faults if fault.kind == "delay")
+        if delay_s and closing.wait(delay_s):
             self.close_connection = True
             return
         if "closed" in kinds:

@@ -21,8 +21,9 @@ def list_lines(catalogs: Sequence[Catalog]) -> Iterable[str]:
             waveband = catalog.waveband
             yield str(waveband)
         depths = ", ".join(_depth(band) for band in catalog.band_list if band.depth is not None) or "no depth"
+        n = len(catalog.unverified)
         state = "; waits for a check" if catalog.needs_check else ""
-        note = f"{state}; {len(catalog.unverified)} facts unverified" if catalog.unverified else state
+        note = f"{state}; {n} fact{'' if n == 1 else 's'} unverified" if catalog.unverified else state
         yield f"  {catalog.id:<{width}}  {catalog.release}; {depths}; {coverage_text(catalog)}{note}"
 
 
@@ -121,13 +122,13 @@ def coverage_text(catalog: Catalog) -> str:
 
 
 def _region_text(region: Region) -> str:
-    parts = [region.kind + (" outside" if region.outside else "")]
+    parts = [region.kind]
     if region.dec_deg is not None:
         parts.append(f"Dec {region.dec_deg[0]:+g} to {region.dec_deg[1]:+g}")
     if region.l_deg is not None:
         parts.append(f"l {region.l_deg[0]:g} to {region.l_deg[1]:g}")
     if region.b_deg is not None and region.b_deg != (-90.0, 90.0):
-        parts.append(f"b {region.b_deg[0]:+g} to {region.b_deg[1]:+g}")
+        parts.append(f"{'outside ' if region.outside else ''}b {region.b_deg[0]:+g} to {region.b_deg[1]:+g}")
     return " ".join(parts)
 
 

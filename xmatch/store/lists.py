@@ -12,10 +12,11 @@ from sqlalchemy import Connection, insert, select
 
 from xmatch.errors import StoreError
 from xmatch.records import Pointings, Reply, Rows
+from xmatch.store import cones
 from xmatch.store import schema_lists as tables
 from xmatch.store.border import integer, json_text, required, text, utc_text
 from xmatch.store.schema_lists import CheckVerdict
-from xmatch.store.writing import CHUNK, healpix, insert_one
+from xmatch.store.writing import CHUNK, insert_one
 
 
 @dataclass(frozen=True)
@@ -62,7 +63,7 @@ def put_list(connection: Connection, reply: Reply, rows: Rows) -> int:
         n_rows=len(rows),
         body=zlib.compress(reply.body),
     )
-    hpx29 = healpix(ra, dec).tolist()
+    hpx29 = cones.index(ra, dec).tolist()
     values = [
         {
             "list_id": list_id,

@@ -7,12 +7,11 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 from sqlalchemy import Connection, Table, func, insert, select
 
 from xmatch.errors import RangeError, StoreError
-from xmatch.records import Band, Floats, Reply, ReplyStatus, Rows, Search, Target
-from xmatch.store import schema
+from xmatch.records import Band, Reply, ReplyStatus, Rows, Search, Target
+from xmatch.store import cones, schema
 from xmatch.store.border import computed, integer, json_text, measured, required, text, utc_text
 
 CHUNK = 20_000
@@ -197,7 +196,7 @@ def _put_rows(connection: Connection, search_id: int, catalog_key: int, catalog_
             f"{catalog_id}: row {text(rows.key[first])!r} lies at RA {ra[first]}, Dec {dec[first]} deg; the store "
             "takes 0 to 360 and -90 to 90; leave rows without a position out"
         )
-    hpx29 = healpix(ra, dec)
+    hpx29 = cones.index(ra, dec)
     columns = {
         "hpx29": hpx29.tolist(),
         "search_id": [search_id] * n,
@@ -250,27 +249,6 @@ def _check_shapes(catalog_id: str, rows: Rows, n: int) -> None:
     wrong = {name: size for name, size in sizes.items() if size != n}
     if wrong:
         raise RangeError(f"{catalog_id}: {n} rows, but {wrong}; every array must have one value a row")
-
-
-def healpix(ra_deg: Floats, dec_deg: Floats) -> NDArray[np.int64]:
-    """Return the nested HEALPix index of order 29 of positions.
-
-    Parameters
-    ----------
-    ra_deg, dec_deg : array of float, shape (n,)
-        ICRS degrees, finite.
-
-    References
-    ----------
-    Gorski et al. 2005, ApJ 622, 759.
-    """
-    # imported here: it brings astropy, which a warm answer does without
-    import astropy.units as u
-    from astropy.coordinates import Latitude, Longitude
-    from cdshealpix.nested import lonlat_to_healpix
-
-    index = lonlat_to_healpix(Longitude(ra_deg, u.deg), Latitude(dec_deg, u.deg), schema.HEALPIX_ORDER, num_threads=1)
-    return np.atleast_1d(index).astype(np.int64)
 
 
 def _band_ids(connection: Connection, catalog_key: int) -> dict[str, int]:
