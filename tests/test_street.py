@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from nine import STREET, nine_catalogs
 
 from xmatch.archives.transport import Transport
 from xmatch.assumptions import Assumptions
@@ -20,10 +21,6 @@ from xmatch.pipeline import LookOptions, look
 from xmatch.records import Look, Outcome, StandingWord
 from xmatch.store.store import Store, open_store
 
-STREET = (
-    "erass1-main", "gaia-dr3", "ps1-dr1", "2mass-psc", "catwise2020", "nvss", "racs-low", "vlass-ql1", "atnf-psr",
-)  # fmt: skip
-"""Nine catalogs of every kind of story; tests/test_registry.py walks the street with all."""
 SHOWN = {name: BUILT_TO_SHOW[name] for name in STREET}
 REMOTE = {
     "gaia-dr3": "I/355/gaiadr3",
@@ -45,7 +42,7 @@ def ask(store: Store, archive: Any, **how: Any) -> Look:
     return look(
         demo_target(),
         store=store,
-        catalogs={name: catalog for name, catalog in load_catalogs().items() if name in STREET},
+        catalogs=nine_catalogs(),
         transport=Transport(addresses=archive.address),
         options=LookOptions(**how),
         **clock,

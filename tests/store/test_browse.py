@@ -22,6 +22,7 @@ from typing import Any
 
 import pytest
 from click.testing import CliRunner
+from nine import make_store
 
 from xmatch.cli.browse import command
 from xmatch.errors import ConfigurationError, StoreError
@@ -44,12 +45,8 @@ class Site:
 @pytest.fixture(scope="module")
 def site(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Site]:
     """A demo store, shown by the command in a process of its own."""
-    from xmatch.cli.running import run_look
-    from xmatch.demo.scene import demo_archive, demo_target
-
     path = tmp_path_factory.mktemp("browse") / "demo.sqlite"
-    with demo_archive() as archive:
-        run_look(demo_target(), quiet=True, store=str(path), archives=archive.address)
+    make_store(path)
     top = str(Path(__file__).parent.parent.parent)
     log = path.with_name("log")
     said = log.open("wb")

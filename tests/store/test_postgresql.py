@@ -11,6 +11,7 @@ from typing import Any
 
 import pytest
 from click.testing import CliRunner
+from nine import make_store
 
 from xmatch.cli import sql as sql_command
 from xmatch.cli import store as store_command
@@ -27,13 +28,8 @@ WRITERS = Path(__file__).parent / "writers.py"
 
 @pytest.fixture(scope="module")
 def demo(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    from xmatch.cli.running import run_look
-    from xmatch.demo.scene import demo_archive, demo_target
-
     path = tmp_path_factory.mktemp("demo") / "demo.sqlite"
-    with demo_archive() as archive:
-        run_look(demo_target(), quiet=True, store=str(path), archives=archive.address)
-    return path
+    return make_store(path)
 
 
 @pytest.fixture(scope="module")

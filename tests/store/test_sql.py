@@ -19,6 +19,7 @@ from typing import Any
 
 import pytest
 from click.testing import CliRunner
+from nine import make_store
 
 from xmatch.cli.sql import command
 from xmatch.constants import PC_CM
@@ -37,13 +38,8 @@ BIG = 2**63 - 1
 @pytest.fixture(scope="module")
 def demo(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """The store of a demo, made once."""
-    from xmatch.cli.running import run_look
-    from xmatch.demo.scene import demo_archive, demo_target
-
     path = tmp_path_factory.mktemp("demo") / "demo.sqlite"
-    with demo_archive() as archive:
-        run_look(demo_target(), quiet=True, store=str(path), archives=archive.address)
-    return path
+    return make_store(path)
 
 
 def answer(path: Path, sql: str, params: Any = None, **options: Any) -> list[tuple[Any, ...]]:
