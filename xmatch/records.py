@@ -302,7 +302,7 @@ class Candidate:
     tail: float
     """Probability that a true match lies at least this far out."""
     chance: float
-    """Probability of an unrelated row at least this close (in normalised separation)."""
+    """Probability of an unrelated row as close and, where the catalog gives one, as bright (in normalised separation)."""
     odds: float
     """Posterior probability of being the counterpart, all rows of the catalog considered."""
     photometry: tuple[Measured, ...] = ()
