@@ -164,7 +164,8 @@ def conclude(
 ) -> Look:
     """Draw everything that can be drawn from the evidence. Pure but for the packaged class files."""
     weighed = weigh_all(target, evidence, assumptions)
-    found = findings(target, evidence, assumptions, weighed)
+    expected_distinct, trials = distinct_expected(target.position, weighed, assumptions)
+    found = findings(target, evidence, assumptions, weighed, trials)
     sources, none_listed = physical_objects(target, evidence, weighed, found, assumptions)
     limits: tuple[PhysicalLimit, ...] = tuple(
         physical_limit(limit, target, assumptions) for finding in found for limit in finding.limits
@@ -189,5 +190,5 @@ def conclude(
         store=store_name,
         sources=sources,
         none_listed=none_listed,
-        expected_distinct=distinct_expected(target.position, weighed, assumptions)[0],
+        expected_distinct=expected_distinct,
     )

@@ -80,15 +80,18 @@ def findings(
     evidence: Sequence[Evidence],
     assumptions: Assumptions,
     weighed: Mapping[str, Weighed] | None = None,
+    trials: float | None = None,
 ) -> tuple[Finding, ...]:
     """Return what each catalog says about the target, in the order given.
 
     The outcome of a catalog depends on the others only through the chance alignments expected over
-    all catalogs searched. ``weighed`` is what :func:`weigh_all` gave, if it is known already.
+    all catalogs searched. ``weighed`` is what :func:`weigh_all` gave and ``trials`` the number of independent
+    ones from :func:`xmatch.sources.distinct_expected`, if they are known already.
     """
     if weighed is None:
         weighed = weigh_all(target, evidence, assumptions)
-    _, trials = distinct_expected(target.position, weighed, assumptions)
+    if trials is None:
+        _, trials = distinct_expected(target.position, weighed, assumptions)
     return tuple(_finding(target, item, weighed.get(item.catalog.id), trials, assumptions) for item in evidence)
 
 

@@ -15,6 +15,10 @@ LEAST_ROWS = 10
 """Rows a catalog needs for the share it has in common with others to mean anything (our choice)."""
 MOST_ROWS = 400
 """Rows, nearest first, that are tried: enough for a share good to a few per cent (our choice)."""
+COARSER = 3.0
+"""Rows whose errors are this much larger than any of a catalog's own pair with it by chance alone (our choice)."""
+CROWDED = 2.0
+"""Others expected within the reach of a row above which no pair can be told from chance (our choice)."""
 ASIDE = 3.0
 """Shift, in reaches, at which agreement of two catalogs can only be chance (our choice)."""
 
@@ -59,16 +63,31 @@ def new_shares(fields: Sequence[Field], k: float) -> Floats:
         table = np.vstack([one.east_arcsec, one.north_arcsec, one.cxx, one.cyy, one.cxy])
         table = table[:, np.isfinite(table).all(axis=0)]
         near = table[:, np.argsort(np.hypot(table[0], table[1]), kind="stable")[:MOST_ROWS]]
-        if union.shape[1] and near.shape[1] >= LEAST_ROWS:
+        others = _comparable(union, near, k)
+        if others.shape[1] and near.shape[1] >= LEAST_ROWS:
             # only where both looked: beyond the last row of the others nothing can be in common
-            near = near[:, np.hypot(near[0], near[1]) <= np.hypot(union[0], union[1]).max()]
-        if union.shape[1] and near.shape[1] >= LEAST_ROWS:
-            by_chance = _paired(near, union, k, aside=True)
-            together = _paired(near, union, k, aside=False)
+            near = near[:, np.hypot(near[0], near[1]) <= np.hypot(others[0], others[1]).max()]
+        if others.shape[1] and near.shape[1] >= LEAST_ROWS:
+            by_chance = _paired(near, others, k, aside=True)
+            together = _paired(near, others, k, aside=False)
             if by_chance < 1.0:
                 shares[index] = 1.0 - min(max((together - by_chance) / (1.0 - by_chance), 0.0), 1.0)
         union = np.hstack([union, table])
     return shares
+
+
+def _comparable(others: Floats, near: Floats, k: float) -> Floats:
+    """Rows of the others with which a pair would mean something: not much coarser, around the near rows, not a crowd."""
+    if not others.shape[1] or not near.shape[1]:
+        return others[:, :0]
+    largest = float(near[2:4].max())
+    span = float(np.hypot(near[0], near[1]).max())
+    keep = (np.maximum(others[2], others[3]) <= COARSER**2 * largest) & (np.hypot(others[0], others[1]) <= 1.2 * span)
+    kept = others[:, keep]
+    if not kept.shape[1] or span <= 0.0:
+        return kept
+    reach2 = k * k * (float(np.median(near[2:4])) + float(np.median(kept[2:4])))
+    return kept if kept.shape[1] * reach2 / span**2 <= CROWDED else kept[:, :0]
 
 
 def _paired(rows: Floats, others: Floats, k: float, *, aside: bool) -> float:

@@ -186,7 +186,9 @@ def _one_way(
     span = np.abs(np.subtract.outer(picked.epoch_yr, ends)).max(axis=1)
     speed = np.hypot(np.nan_to_num(picked.pm_ra_mas_yr), np.nan_to_num(picked.pm_dec_mas_yr))
     fastest = float(np.max(np.hypot(np.nan_to_num(other.pm_ra_mas_yr), np.nan_to_num(other.pm_dec_mas_yr))))
-    widest = k * float(np.sqrt(np.max(_largest(other, np.full(len(other), float(span.max())), assumptions))))
+    slack = float(span.max()) * _motion_spread(other, assumptions) / 1e3
+    widest = k * float(np.sqrt(np.max(other.sigma_major_arcsec) ** 2 + assumptions.frame_sigma_arcsec**2 + slack**2))
+    widest += k * assumptions.parallax_mas / 1e3
     reach = k * np.sqrt(_largest(picked, span, assumptions)) + widest + span * (speed + fastest) / 1e3
     _, north1 = offsets_arcsec(ra0, dec0, picked.ra_deg, picked.dec_deg)
     _, north2 = offsets_arcsec(ra0, dec0, other.ra_deg, other.dec_deg)
@@ -209,6 +211,12 @@ def _one_way(
 
 def _has_motion(rows: Rows) -> Bools:
     return np.asarray(np.isfinite(rows.pm_ra_mas_yr) & np.isfinite(rows.pm_dec_mas_yr), dtype=bool)
+
+
+def _motion_spread(rows: Rows, assumptions: Assumptions) -> float:
+    """The largest error that any motion of these rows may have, mas/yr: a bound, cheaper than every row's own."""
+    listed = max(float(np.max(np.nan_to_num(v))) for v in (rows.pm_ra_error_mas_yr, rows.pm_dec_error_mas_yr))
+    return max(listed, assumptions.motion_error_mas_yr, assumptions.population_motion_mas_yr)
 
 
 def _largest(rows: Rows, dt_yr: Floats | float, assumptions: Assumptions) -> Floats:
