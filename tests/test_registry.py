@@ -216,6 +216,11 @@ def test_blank_for_a_pointing_mission_rests_on_an_exposure(store: Store, transpo
     assert held["holds_target"].tolist() == [1]  # the other is beyond the reach that was asked for
     assert held["off_axis_arcmin"].tolist() == pytest.approx([10.2], abs=0.01)
     assert {search.table for search in swift.searches} == {"main", "observation log"}
+    (limit,) = swift.limits
+    # 1.93 ks x (1 - 0.5 x 10.2 / 11.8) = 1.096 ks of 2 ks: 1.825 times the flux of the stated depth
+    assert "worth 1.1 ks: 1.82 times the flux" in limit.note
+    on_axis = 2.0e-13 * (3.0 + 1.645) / 3.0  # the 95 % limit of a 3 sigma list
+    assert limit.value == pytest.approx(on_axis * 1.825, rel=0.01)
 
 
 def test_where_it_never_pointed_nothing_follows(store: Store, transport: Transport) -> None:

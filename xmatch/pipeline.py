@@ -127,11 +127,15 @@ def look(
 
 
 def requests_of(
-    target: Target, *, store: Store, catalogs: Mapping[str, Catalog], options: LookOptions | None = None
+    target: Target,
+    *,
+    store: Store,
+    catalogs: Mapping[str, Catalog],
+    transport: Transport,
+    options: LookOptions | None = None,
 ) -> list[str]:
     """Return exactly what a look would send now, in order, without asking and without writing anything."""
     from xmatch.archives.fleet import plan_requests
-    from xmatch.archives.transport import Politeness
 
     options = options or LookOptions()
     target_id = store.find_target(target)
@@ -147,7 +151,7 @@ def requests_of(
         age_limit_days=options.age_limit_days,
     )
     due = [step for step in plan if step.ask]
-    return plan_requests(to_ask(due, store, datetime.now(UTC), again=options.again), Politeness().per_host)
+    return plan_requests(to_ask(due, store, datetime.now(UTC), again=options.again), transport.per_host)
 
 
 def conclude(

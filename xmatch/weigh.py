@@ -16,7 +16,7 @@ from xmatch.flux.physical import observed_flux_cgs
 from xmatch.limits.coverage import SECTORS, Contains, covered_fraction, sides_with_rows
 from xmatch.limits.depth import limit_for_band
 from xmatch.limits.hiding import raise_limit
-from xmatch.limits.pointings import exposures
+from xmatch.limits.pointings import Exposed, exposure_factor, exposures
 from xmatch.limits.pulses import (
     contains_whole_pulse_probability,
     overlaps_pulse_probability,
@@ -30,6 +30,7 @@ from xmatch.records import (
     Candidate,
     Finding,
     Limit,
+    LimitMethod,
     Outcome,
     Pointings,
     Quantity,
@@ -342,10 +343,21 @@ def _limits(
     found: list[Limit] = []
     hiding: list[str] = []
     for columns in catalog.bands:
+        if catalog.log is not None and columns.band.depth is None:
+            continue  # neighbours lie in other exposures: they say nothing of this one
         photometry = rows.flux.get(columns.band.name)
-        limit = limit_for_band(columns.band, photometry, assumptions=assumptions)
+        # where a mission pointed, the exposure that holds the position says more than neighbours in other exposures
+        exposed = _longest(target, item) if columns.band.depth is not None else None
+        limit = limit_for_band(
+            columns.band,
+            None if exposed else photometry,
+            assumptions=assumptions,
+            why_none="neighbours lie in other exposures" if exposed else "no neighbours",
+        )
         if limit is None:
             continue
+        if exposed is not None and limit.method is LimitMethod.NOMINAL:
+            limit = _in_exposure(limit, catalog, exposed)
         limit = replace(limit, search_ids=ids, flag="; ".join(flags))
         if photometry is not None and len(rows):
             limit, raised = raise_limit(
@@ -355,6 +367,37 @@ def _limits(
                 hiding.append(f"a bright neighbour hides the position in {columns.band.name} ({limit.flag})")
         found.append(_as_pulse(target, catalog, limit))
     return tuple(found), hiding
+
+
+def _longest(target: Target, item: Evidence) -> Exposed | None:
+    """The pointing with the longest exposure on the position."""
+    if item.pointings is None:
+        return None
+    return next(iter(exposures(item.pointings, target.position.ra_deg, target.position.dec_deg)), None)
+
+
+def _in_exposure(limit: Limit, catalog: Catalog, exposed: Exposed) -> Limit:
+    """A depth on the axis in a reference exposure, at the exposure and angle that the observation log gives."""
+    log = catalog.log
+    assert log is not None
+    factor, effective_s = (
+        float(value)
+        for value in exposure_factor(
+            exposed.exposure_s,
+            exposed.off_axis_arcmin,
+            log.reference_s,
+            log.field_radius_arcmin,
+            log.vignetting_at_edge,
+        )
+    )
+    is_magnitude = limit.band.quantity is Quantity.MAGNITUDE
+    value = limit.value - 2.5 * float(np.log10(factor)) if is_magnitude else limit.value * factor
+    return replace(
+        limit,
+        value=value,
+        note=f"{limit.note}; stated for {log.reference_s / 1e3:.3g} ks on the axis, here {exposed.exposure_s / 1e3:.3g} ks at "
+        f"{exposed.off_axis_arcmin:.1f} arcmin ({exposed.key}), worth {effective_s / 1e3:.3g} ks: {factor:.3g} times the flux",
+    )
 
 
 def _as_pulse(target: Target, catalog: Catalog, limit: Limit) -> Limit:

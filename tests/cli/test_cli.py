@@ -95,7 +95,13 @@ def test_the_position_is_echoed_in_both_notations_before_anything_is_asked(archi
     first = done.stderr.splitlines()[0]
     assert "17:38:01.50" in first and "264.506250" in first
     assert not archive.requests
-    assert "-source=I/355/gaiadr3" in done.stdout
+    assert "I/355/gaiadr3" in done.stdout
+    shown = [block for block in done.stdout.split("\n\n") if block.startswith(("GET ", "POST "))]
+    looked = run("look", HERE, "--json", BLANKFIELD_ARCHIVES=archive.address)
+    assert looked.returncode == 0, looked.stderr
+    assert len(archive.requests) == len(shown)
+    asked = sorted(request.body.splitlines()[0] for request in archive.requests if request.body.startswith("-source"))
+    assert asked == sorted(line for line in done.stdout.splitlines() if line.startswith("-source"))
 
 
 def test_look_answers_and_a_second_look_needs_no_archive(archive: Any) -> None:

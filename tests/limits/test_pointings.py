@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from xmatch.limits.coverage import Region, covered_fraction, sides_with_rows, touches
-from xmatch.limits.pointings import exposures, holds
+from xmatch.limits.pointings import exposure_factor, exposures, holds
 from xmatch.records import Pointings, Position
 
 HERE = Position(180.0, 0.0, 1.0, 1.0)
@@ -68,3 +68,27 @@ def test_rows_on_all_sides_and_rows_on_one_side() -> None:
     assert sides_with_rows(HERE, ra[dec > 0.0], dec[dec > 0.0], 3.0, 3) == 4
     assert sides_with_rows(HERE, ra[:7], dec[:7], 3.0, 3) < 8
     assert sides_with_rows(HERE, ra, dec, 3600.0, 3) == 0
+
+
+@pytest.mark.parametrize(
+    ("exposure_s", "off_axis_arcmin", "factor"),
+    [
+        (2.0e4, 0.0, 1.0),
+        (8.0e4, 0.0, 0.5),  # four times the exposure: half the flux where the background decides
+        (5.0e3, 0.0, 4.0),  # a quarter: four times the flux where counts decide
+        (4.0e4, 10.0, 1.0),  # half of the area is left at the edge
+        (2.0e4, 5.0, 1.0 / 0.75),
+    ],
+)
+def test_a_depth_follows_exposure_and_angle_by_the_pessimistic_law(
+    exposure_s: float, off_axis_arcmin: float, factor: float
+) -> None:
+    got, effective = exposure_factor(exposure_s, off_axis_arcmin, 2.0e4, 10.0, 0.5)
+    assert got == pytest.approx(factor)
+    assert effective == pytest.approx(exposure_s * (1.0 - 0.05 * off_axis_arcmin))
+
+
+def test_a_longer_exposure_is_never_shallower_and_a_larger_angle_never_deeper() -> None:
+    t, angle = np.geomspace(10.0, 1.0e6, 200), np.linspace(0.0, 10.0, 50)
+    assert (np.diff(exposure_factor(t, 0.0, 2.0e4, 10.0, 0.4)[0]) < 0.0).all()
+    assert (np.diff(exposure_factor(2.0e4, angle, 2.0e4, 10.0, 0.4)[0]) > 0.0).all()

@@ -273,7 +273,7 @@ class _Reader(Checked):
         log = self.section(
             where, coverage["log"],
             ("protocol", "address", "table", "geometry", "mode", "key", "ra", "dec", "exposure", "start", "instrument",
-             "field_radius_arcmin", "units", "source"),
+             "field_radius_arcmin", "reference_s", "vignetting_at_edge", "units", "source"),
         )  # fmt: skip
         table: dict[str, Any] = {
             key: log[key] for key in ("protocol", "address", "table", "geometry", "mode", "source") if key in log
@@ -287,6 +287,8 @@ class _Reader(Checked):
             start=self.maybe_text(where, log, "start"),
             instrument=self.maybe_text(where, log, "instrument"),
             field_radius_arcmin=self.number(where, log, "field_radius_arcmin", low=0.1, high=300.0),
+            reference_s=self.number(where, log, "reference_s", low=1.0),
+            vignetting_at_edge=self.number(where, log, "vignetting_at_edge", low=0.01, high=1.0),
             units=self.words(where, log, "units"),
             source=self.need_source(where, log),
         )

@@ -141,6 +141,10 @@ class PointingLog:
     start: str | None
     instrument: str | None
     field_radius_arcmin: float
+    reference_s: float
+    """Exposure on the axis for which the depths of the bands stand."""
+    vignetting_at_edge: float
+    """Part of the effective area that is left at the edge of the field."""
     units: Mapping[str, str]
     source: str
 

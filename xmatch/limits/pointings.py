@@ -72,3 +72,44 @@ def exposures(pointings: Pointings, ra_deg: float, dec_deg: float) -> tuple[Expo
         for i in np.flatnonzero(off <= pointings.field_radius_arcmin)
     ]
     return tuple(sorted(found, key=lambda one: (-one.exposure_s, one.off_axis_arcmin, one.key)))
+
+
+def exposure_factor(
+    exposure_s: ArrayLike,
+    off_axis_arcmin: ArrayLike,
+    reference_s: float,
+    field_radius_arcmin: float,
+    vignetting_at_edge: float,
+) -> tuple[Floats, Floats]:
+    """How a depth on the axis in a reference exposure changes with exposure and angle.
+
+    Parameters
+    ----------
+    exposure_s, off_axis_arcmin : array_like
+        Exposure in s, above 0, and angle from the axis in arcmin, 0 to the reach of the field.
+    reference_s : float
+        Exposure for which the depth is stated, in s.
+    field_radius_arcmin : float
+        Reach of the field, in arcmin.
+    vignetting_at_edge : float
+        Part of the effective area that is left at the edge of the field, above 0 to 1.
+
+    Returns
+    -------
+    factor : ndarray
+        What the faintest detectable flux on the axis is multiplied by.
+    effective_s : ndarray
+        Exposure times vignetting, in s.
+
+    Notes
+    -----
+    Between the two limits of counting: where the background decides, the faintest flux falls with the square root of the
+    exposure; where a source needs a number of counts, with the exposure itself (definition of a Poisson threshold). Which
+    holds is not known to a log, so the pessimistic one is taken: the square root beyond the reference exposure, the
+    exposure itself below it. Vignetting is taken as linear in the angle (common practice, no source).
+    """
+    exposure, off = np.asarray(exposure_s, dtype=float), np.asarray(off_axis_arcmin, dtype=float)
+    seen = 1.0 - (1.0 - vignetting_at_edge) * np.clip(off / field_radius_arcmin, 0.0, 1.0)
+    effective = exposure * seen
+    ratio = effective / reference_s
+    return np.where(ratio >= 1.0, ratio**-0.5, 1.0 / ratio), effective
