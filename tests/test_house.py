@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 PACKAGE = Path(__file__).parent.parent / "xmatch"
-GROUND = {"errors", "records", "asking", "units", "vocabulary", "assumptions", "constants"}
+GROUND = {"errors", "records", "objects", "asking", "units", "vocabulary", "assumptions", "constants"}
 PURE = {"match", "limits", "flux", "spin"}
 MAY_IMPORT = {
     **{name: GROUND for name in GROUND},
@@ -28,9 +28,12 @@ MAY_IMPORT = {
     "archives": GROUND | {"__init__"},
     "demo": GROUND | {"resources", "target", "catalogs", "__init__"},
     "plan": GROUND | PURE | {"catalogs"},
-    "weigh": GROUND | PURE | {"catalogs", "plan"},
+    "weigh": GROUND | PURE | {"catalogs", "plan", "sources"},
+    "sources": GROUND | PURE,
     "gather": GROUND | PURE | {"catalogs", "archives", "store", "plan", "weigh"},
-    "pipeline": GROUND | PURE | {"catalogs", "classes", "archives", "store", "plan", "gather", "weigh", "__init__"},
+    "pipeline": GROUND
+    | PURE
+    | {"catalogs", "classes", "archives", "store", "plan", "gather", "weigh", "sources", "__init__"},
     "inspection": GROUND | PURE | {"catalogs", "archives", "store"},
     "report": GROUND | PURE | {"catalogs", "position", "__init__"},
 }

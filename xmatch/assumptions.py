@@ -26,10 +26,27 @@ class Assumptions:
     """Alignment error between any two frames, added per axis (common practice, no source)."""
     population_motion_mas_yr: float = 30.0
     """Per-axis spread of unknown proper motions of field stars (common practice, no source)."""
+    motion_error_mas_yr: float = 5.0
+    """Per-axis error of a listed proper motion whose own error is missing (common practice, no source)."""
+    parallax_mas: float = 0.0
+    """Largest annual parallax allowed to a row, whose position may be of any time of the year; 0 means none."""
     target_speed_km_s: float = 0.0
     """1-D transverse speed allowed to the target itself; 0 means it is taken as still."""
     listed_fraction: float = 0.5
     """Prior chance that a true counterpart would be listed in a catalog (uninformative; stated)."""
+    heavy_tail: float = 0.001
+    """Share of true matches whose error is not what was stated: spread evenly over the cone (common practice, no
+    source), so that no row is ever impossible."""
+    offset_positions: int = 200
+    """Positions beside the target at which the same search is repeated, to see what chance really does."""
+    offset_positions_least: int = 50
+    """Fewer positions than this that fit into the cone give no empirical check."""
+    offset_disagree_p: float = 0.003
+    """Binomial probability below which the repeated search disagrees with the density and replaces it."""
+    gradient_p: float = 0.01
+    """Rayleigh-test probability below which crowding is said to rise to one side."""
+    together_odds: float = 0.5
+    """Probability from which rows of two catalogs are taken as one object (common practice, no source)."""
     counterpart_odds: float = 0.9
     """Probability of a true match from which a row may be called counterpart (common practice, no source)."""
     counterpart_global_chance: float = 0.01

@@ -21,8 +21,9 @@ from xmatch.flux.physical import physical_limit, resolve
 from xmatch.gather import Progress, ask_due, gather, ready, to_ask, waiting_remark
 from xmatch.plan import make_plan
 from xmatch.records import Look, PhysicalLimit, Target
+from xmatch.sources import distinct_expected
 from xmatch.spin.figures import figures
-from xmatch.weigh import Evidence, expected_chance_total, findings
+from xmatch.weigh import Evidence, expected_chance_total, findings, physical_objects, weigh_all
 
 if TYPE_CHECKING:
     from xmatch.archives.transport import Transport
@@ -166,7 +167,10 @@ def conclude(
     remarks: Sequence[str] = (),
 ) -> Look:
     """Draw everything that can be drawn from the evidence. Pure but for the packaged class files."""
-    found = findings(target, evidence, assumptions)
+    weighed = weigh_all(target, evidence, assumptions)
+    expected_distinct, trials = distinct_expected(target.position, weighed, assumptions)
+    found = findings(target, evidence, assumptions, weighed, trials)
+    sources, none_listed = physical_objects(target, evidence, weighed, found, assumptions)
     limits: tuple[PhysicalLimit, ...] = tuple(
         physical_limit(limit, target, assumptions) for finding in found for limit in finding.limits
     )
@@ -188,4 +192,7 @@ def conclude(
         offline=offline,
         remarks=tuple(remarks),
         store=store_name,
+        sources=sources,
+        none_listed=none_listed,
+        expected_distinct=expected_distinct,
     )

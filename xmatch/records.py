@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, fields
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -54,6 +55,9 @@ from xmatch.vocabulary import (
 from xmatch.vocabulary import (
     Waveband as Waveband,
 )
+
+if TYPE_CHECKING:
+    from xmatch.objects import Source
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
@@ -310,7 +314,7 @@ class Candidate:
     tail: float
     """Probability that a true match lies at least this far out."""
     chance: float
-    """Probability of an unrelated row at least this close (in normalised separation)."""
+    """Probability of an unrelated row as close and, where the catalog gives one, as bright (in normalised separation)."""
     odds: float
     """Posterior probability of being the counterpart, all rows of the catalog considered."""
     photometry: tuple[Measured, ...] = ()
@@ -380,6 +384,10 @@ class Finding:
     limits: tuple[Limit, ...] = ()
     age_s: float | None = None
     """Age of the oldest answer used."""
+    decided: Mapping[str, float] = field(default_factory=dict)
+    """The numbers that decided the outcome, beside the thresholds they were held against; empty where none was compatible."""
+    density_note: str = ""
+    """Where the density comes from and what is uneven about the field."""
 
 
 # ------------------------------------------------------------------------------------------------
@@ -485,3 +493,9 @@ class Look:
     offline: bool
     remarks: tuple[str, ...] = ()
     store: str = ""
+    sources: tuple[Source, ...] = ()
+    """The compatible rows of all catalogs as physical objects, most probable first."""
+    none_listed: float | None = None
+    """Posterior probability that the target is none of them."""
+    expected_distinct: float | None = None
+    """Expected unrelated objects, each counted once however many catalogs list it."""

@@ -22,8 +22,9 @@ from xmatch.limits.pulses import (
     overlaps_pulse_probability,
     pulse_peak_limit,
 )
-from xmatch.match.chance import chance_within
-from xmatch.match.decide import Weighed, candidates, outcome, weigh
+from xmatch.match.chance import chance_within, global_p
+from xmatch.match.decide import Weighed, candidates, decided, outcome, weigh
+from xmatch.objects import Source
 from xmatch.plan import FASTEST_STAR_ARCSEC_YR
 from xmatch.records import (
     Candidate,
@@ -39,6 +40,7 @@ from xmatch.records import (
     Target,
     Waveband,
 )
+from xmatch.sources import distinct_expected, objects_of
 
 COVERED = 1.0 - 1.0e-9
 ROWS_A_SIDE = 3
@@ -74,41 +76,82 @@ class Evidence:
     """Says which positions the catalog looked at, from the log or a fetched footprint."""
 
 
-def findings(target: Target, evidence: Sequence[Evidence], assumptions: Assumptions) -> tuple[Finding, ...]:
+def findings(
+    target: Target,
+    evidence: Sequence[Evidence],
+    assumptions: Assumptions,
+    weighed: Mapping[str, Weighed] | None = None,
+    trials: float | None = None,
+) -> tuple[Finding, ...]:
     """Return what each catalog says about the target, in the order given.
 
     The outcome of a catalog depends on the others only through the chance alignments expected over
-    all catalogs searched.
+    all catalogs searched. ``weighed`` is what :func:`weigh_all` gave and ``trials`` the number of independent
+    ones from :func:`xmatch.sources.distinct_expected`, if they are known already.
     """
-    distance_pc = None
-    if target.distance is not None:
-        distance_pc = float(np.sqrt(target.distance.low_pc * target.distance.high_pc))
-    weighed: dict[str, Weighed] = {}
-    for item in evidence:
-        if item.rows is not None and item.complete:
-            radius = min(search.radius_arcsec for search in item.searches)
-            weighed[item.catalog.id] = weigh(
-                target.position, item.rows, radius_arcsec=radius, assumptions=assumptions, distance_pc=distance_pc
-            )
-    return tuple(_finding(target, item, weighed.get(item.catalog.id), weighed, assumptions) for item in evidence)
+    if weighed is None:
+        weighed = weigh_all(target, evidence, assumptions)
+    if trials is None:
+        _, trials = distinct_expected(target.position, weighed, assumptions)
+    return tuple(_finding(target, item, weighed.get(item.catalog.id), trials, assumptions) for item in evidence)
 
 
-def _global_chance(own: Weighed, all_weighed: Mapping[str, Weighed]) -> float:
-    """Chance that any catalog searched shows an unrelated row as good as this catalog's best one.
+def weigh_all(target: Target, evidence: Sequence[Evidence], assumptions: Assumptions) -> dict[str, Weighed]:
+    """Every catalog with a whole answer, its rows held against the target."""
+    return {
+        item.catalog.id: weigh(
+            target.position,
+            item.rows,
+            radius_arcsec=min(search.radius_arcsec for search in item.searches),
+            assumptions=assumptions,
+            distance_pc=middle_distance_pc(target),
+            bands=item.catalog.band_list,
+        )
+        for item in evidence
+        if item.rows is not None and item.complete
+    }
 
-    For the best row the expected number of unrelated rows at least as close is known in its own catalog;
-    the other catalogs are trials of the same kind (Sidak, independent trials).
+
+def middle_distance_pc(target: Target) -> float | None:
+    """Geometric mean of the allowed distances; None without any."""
+    return None if target.distance is None else float(np.sqrt(target.distance.low_pc * target.distance.high_pc))
+
+
+def physical_objects(
+    target: Target,
+    evidence: Sequence[Evidence],
+    weighed: Mapping[str, Weighed],
+    found: Sequence[Finding],
+    assumptions: Assumptions,
+) -> tuple[tuple[Source, ...], float | None]:
+    """Return the physical objects behind the compatible rows, and the probability that none of them is the target."""
+    used = [item for item in evidence if item.catalog.id in weighed and item.rows is not None]
+    return objects_of(
+        target,
+        {item.catalog.id: item.rows for item in used if item.rows is not None},
+        {item.catalog.id: item.catalog.band_list for item in used},
+        weighed,
+        found,
+        assumptions,
+        radius_arcsec=min((s.radius_arcsec for item in used for s in item.searches), default=1.0),
+        distance_pc=middle_distance_pc(target),
+    )
+
+
+def _global_chance(own: Weighed, trials: float) -> float:
+    """Chance that any catalog searched shows an unrelated row as good as this catalog's best one (Sidak).
+
+    The other catalogs are trials of the same kind, as many as they list objects that the others do not.
     """
-    best = int(np.argmax(own.odds))
-    p_best = float(own.chance[best])
-    return 1.0 - (1.0 - p_best) ** max(1, len(all_weighed))
+    best = int(np.argmax(np.where(own.compatible, own.odds, -1.0)))
+    return float(global_p(own.chance[best], trials))
 
 
 def _finding(
     target: Target,
     item: Evidence,
     own: Weighed | None,
-    all_weighed: Mapping[str, Weighed],
+    trials: float,
     assumptions: Assumptions,
 ) -> Finding:
     catalog = item.catalog
@@ -133,7 +176,7 @@ def _finding(
         if item.failed is not None:
             return replace(base, outcome=_FAILED[item.failed.status], why=item.failed.detail)
         return base
-    word, why = _position_says(target, item, own, all_weighed, fraction, assumptions)
+    word, why = _position_says(target, item, own, trials, fraction, assumptions)
     limits: tuple[Limit, ...] = ()
     if word.permits_limit and not catalog.is_object_list:
         limits, raised = _limits(target, item, own, fraction, word, assumptions)
@@ -150,6 +193,10 @@ def _finding(
         n_compatible=int(own.compatible.sum()),
         density_per_deg2=own.density_per_deg2 if np.isfinite(own.density_per_deg2) else None,
         expected_chance=own.expected_chance,
+        decided=decided(own, global_chance=_global_chance(own, trials), assumptions=assumptions)
+        if own.compatible.any()
+        else {},
+        density_note=own.density_note,
         candidates=tuple(_with_flux(one) for one in candidates(own, item.rows, catalog.id, catalog.band_list)),
         limits=limits,
     )
@@ -165,14 +212,14 @@ def _position_says(
     target: Target,
     item: Evidence,
     own: Weighed,
-    all_weighed: Mapping[str, Weighed],
+    trials: float,
     fraction: float | None,
     assumptions: Assumptions,
 ) -> tuple[Outcome, str]:
     """Outcome before neighbours that hide are considered, with the numbers that decided."""
     catalog = item.catalog
     if own.compatible.any():
-        word, why = outcome(own, global_chance=_global_chance(own, all_weighed), assumptions=assumptions)
+        word, why = outcome(own, global_chance=_global_chance(own, trials), assumptions=assumptions)
         if word is not None:
             return word, why
     n = len(own.compatible)

@@ -27,6 +27,16 @@ def value(quantity: str, inputs: dict[str, Any]) -> Any:
     if quantity == "reliability":
         each, none = odds.reliability(**inputs)
         return [*each, none]
+    if quantity == "bayes n-way with ellipses":
+        return odds.bayes_n_way_elliptical(**inputs)[0]
+    if quantity == "odds of one ellipse":
+        f = odds.density_at(np.sqrt(1.5210864), 2.0, 3.5, 1.2990381)  # the ellipse of POS-05 and POS-06
+        q = inputs["listed_fraction"]
+        ratio = odds.likelihood_ratio(q, f, inputs["density_per_deg2"] / 3600.0**2)
+        return odds.reliability([float(ratio)], q)[0][0]
+    if quantity == "expected over catalogs":
+        mu = float(np.sum(chance.expected_in_circle(**inputs)))
+        return [mu, float(chance.chance_within(mu))]
     return FUNCTIONS[quantity](**inputs)
 
 
@@ -98,6 +108,34 @@ def test_likelihood_ratio_and_multi_hypothesis_posterior_are_one() -> None:
     assert float(each[0]) == pytest.approx(float(bayes / (bayes + 1.0 - q)), rel=1e-12)
     assert float(each[0]) == pytest.approx(0.893228, abs=1e-6)  # computed with numpy from the same formula
     assert float(each[0]) + none == pytest.approx(1.0, abs=1e-12)
+
+
+# astropy 8: Earth's place from the built-in ephemeris (ERFA epv00), over one year
+@pytest.mark.parametrize(("ra", "dec"), [(0.0, 0.0), (269.4, 4.7), (100.0, -66.0), (200.0, 89.0)])
+def test_parallax_spread_is_that_of_a_year_of_the_earth(ra: float, dec: float) -> None:
+    from astropy.coordinates import get_body_barycentric
+    from astropy.time import Time
+
+    earth = get_body_barycentric("earth", Time(2016.0 + np.arange(400) / 400.0, format="jyear"), ephemeris="builtin")
+    a, d = np.radians([ra, dec])
+    place = np.stack([axis.to_value("au") for axis in (earth.x, earth.y, earth.z)])
+    east = -np.array([-np.sin(a), np.cos(a), 0.0]) @ place
+    north = -np.array([-np.sin(d) * np.cos(a), -np.sin(d) * np.sin(a), np.cos(d)]) @ place
+    cxx, cyy, cxy = (float(v) for v in motion.parallax_covariance(1000.0, ra, dec))
+    found = np.cov(east, north)
+    assert [cxx, cyy, cxy] == pytest.approx([found[0, 0], found[1, 1], found[0, 1]], abs=0.02)
+
+
+# astropy 8: SkyOffsetFrame; its longitude and latitude are not zenithal equidistant, but agree to third order
+def test_offsets_agree_with_astropys_offset_frame() -> None:
+    rng = np.random.default_rng(9)
+    centre = SkyCoord(264.5, -33.8, unit="deg")
+    others = centre.directional_offset_by(rng.uniform(0, 360, 50) * _deg(), rng.uniform(0.01, 60, 50) * _arcsec())
+    framed = others.transform_to(centre.skyoffset_frame())
+    east, north = separation.offsets_arcsec(264.5, -33.8, others.ra.deg, others.dec.deg)
+    lon = framed.lon.wrap_at(180 * _deg()).arcsec
+    assert east == pytest.approx(lon, abs=1e-5)
+    assert north == pytest.approx(framed.lat.arcsec, abs=1e-5)
 
 
 def _deg() -> Any:

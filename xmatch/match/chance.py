@@ -50,13 +50,16 @@ def downes(p_star: ArrayLike, p_critical: ArrayLike) -> Floats:
     return chance_within(expected)
 
 
-def global_p(p: ArrayLike, trials: int) -> Floats:
-    """Chance that any of ``trials`` independent searches shows one so good (Sidak 1967, JASA 62, 626)."""
+def global_p(p: ArrayLike, trials: float) -> Floats:
+    """Chance that any of ``trials`` independent searches shows one so good (Sidak 1967, JASA 62, 626).
+
+    ``trials`` need not be whole: catalogs that list the same objects count for less than one each.
+    """
     return -np.expm1(trials * np.log1p(-np.asarray(p, dtype=float)))
 
 
 def local_density(separation_arcsec: ArrayLike, inner_arcsec: float, outer_arcsec: float) -> tuple[float, float, int]:
-    """Surface density from the ring between two radii.
+    """Surface density from the ring between two radii; an inner radius below 0 takes the centre in.
 
     Returns
     -------
@@ -65,7 +68,7 @@ def local_density(separation_arcsec: ArrayLike, inner_arcsec: float, outer_arcse
     """
     r = np.asarray(separation_arcsec, dtype=float)
     n = int(np.count_nonzero((r > inner_arcsec) & (r <= outer_arcsec)))
-    area_deg2 = math.pi * (outer_arcsec**2 - inner_arcsec**2) / ARCSEC2_PER_DEG2
+    area_deg2 = math.pi * (outer_arcsec**2 - max(inner_arcsec, 0.0) ** 2) / ARCSEC2_PER_DEG2
     if area_deg2 <= 0.0:
         return math.nan, math.nan, n
     return max(n, 1) / area_deg2, math.sqrt(max(n, 1)) / area_deg2, n

@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 
 from xmatch.position import format_position
 from xmatch.records import Finding, Look, Outcome, PhysicalLimit, Standing, StandingWord
+from xmatch.report.objects import object_lines
 from xmatch.report.words import age, answer, clean, gone, limit_text, number, percent, span
 
 if TYPE_CHECKING:
@@ -49,7 +50,14 @@ ASSUMED = (
     ("listed_fraction", "prior that a catalog lists it", ""),
     ("compatible_sigma", "compatible up to", "sigma"),
     ("population_motion_mas_yr", "motion of stars without one", "mas/yr"),
+    ("motion_error_mas_yr", "error of a motion without one", "mas/yr"),
     ("target_speed_km_s", "the target's own speed", "km/s"),
+    ("parallax_mas", "parallax allowed to rows", "mas"),
+    ("frame_sigma_arcsec", "alignment of frames", "arcsec"),
+    ("heavy_tail", "matches with a wrong error", ""),
+    ("together_odds", "rows joined from", ""),
+    ("counterpart_odds", "a counterpart from", ""),
+    ("counterpart_global_chance", "  and chance up to", ""),
     ("draws", "draws", ""),
     ("seed", "seed", ""),
 )
@@ -84,6 +92,7 @@ def lines(look: Look, width: int) -> Iterator[tuple[str, str]]:
             yield f"{waveband}", "underline"
         yield from _finding(look, finding, width, longest)
     yield from _chance(look, width)
+    yield from _objects(look, width)
     yield from _limits(look, width)
     yield from _spin(look, width)
     yield from _standings(look, width)
@@ -159,10 +168,23 @@ def _finding(look: Look, finding: Finding, width: int, longest: int) -> Iterator
 
 
 def _chance(look: Look, width: int) -> Iterator[tuple[str, str]]:
+    distinct = (
+        f", {number(look.expected_distinct)} counting an object once however many catalogs list it"
+        if look.expected_distinct is not None
+        else ""
+    )
     yield from _wrap(
-        f"Over all catalogs searched, {number(look.expected_chance)} unrelated rows are expected inside the error regions.",
+        f"Over all catalogs searched, {number(look.expected_chance)} unrelated rows are expected inside the error regions{distinct}.",
         width,
     )
+
+
+def _objects(look: Look, width: int) -> Iterator[tuple[str, str]]:
+    if not look.sources:
+        return
+    yield from _section("The rows as objects (one object, one row in each catalog)", width)
+    for label, text in object_lines(look):
+        yield from _wrap(text, width, label, " " * 6)
 
 
 def _limits(look: Look, width: int) -> Iterator[tuple[str, str]]:

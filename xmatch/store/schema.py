@@ -302,7 +302,11 @@ match = _table(
     _real("separation_arcsec", "Separation from the target.", unit="arcsec"),
     _real("normalised_separation", "Separation in units of the combined error ellipse.", unit="sigma"),
     _real("tail", "Probability that a true match lies at least this far out.", unit="probability"),
-    _real("chance", "Probability of an unrelated row at least this close.", unit="probability"),
+    _real(
+        "chance",
+        "Probability of an unrelated row as close and, where the catalog gives one, as bright.",
+        unit="probability",
+    ),
     _real("odds", "Probability of being the counterpart, all rows considered.", unit="probability"),
     ForeignKeyConstraint(["search_id", "ordinal"], ["row.search_id", "row.ordinal"]),
 )
