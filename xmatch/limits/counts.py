@@ -24,7 +24,12 @@ def gehrels_upper(n: ArrayLike, confidence: ArrayLike) -> Floats:
     """Exact upper limit on a Poisson mean after n counts (Gehrels 1986, ApJ 303, 336, eq. 1)."""
     from scipy.special import gammaincinv
 
-    return np.asarray(gammaincinv(_counts("counts", n) + 1.0, _fraction("confidence", confidence)))
+    counts, level = _counts("counts", n), _fraction("confidence", confidence)
+    top = float(counts.max(initial=0.0))
+    if level.ndim == 0 and counts.size > 10.0 * top and np.all(counts == np.floor(counts)):
+        # many whole counts, few different ones: one bound for each, then read off
+        return np.asarray(gammaincinv(np.arange(int(top) + 1) + 1.0, level)[counts.astype(int)])
+    return np.asarray(gammaincinv(counts + 1.0, level))
 
 
 def gehrels_lower(n: ArrayLike, confidence: ArrayLike) -> Floats:
