@@ -158,3 +158,50 @@ SELECT
     standing.run_id
 FROM standing
 JOIN current_run ON current_run.run_id = standing.run_id;
+
+-- The rows of current searches: what the latest whole reply about each name holds, one line per source.
+CREATE VIEW current_row AS
+SELECT
+    current_search.target_name,
+    current_search.catalog_id,
+    current_search.release,
+    current_search.table_name,
+    current_search.asked_at,
+    row.source_key,
+    row.ra_deg,
+    row.dec_deg,
+    row.sigma_major_arcsec,
+    row.sigma_minor_arcsec,
+    row.angle_deg,
+    row.epoch_yr,
+    row.hpx29,
+    row.search_id,
+    row.ordinal
+FROM current_search
+JOIN row ON row.search_id = current_search.search_id;
+
+-- Every answer ever given about each name, the latest first: place 1 is current, place 2 the one before.
+CREATE VIEW standing_history AS
+SELECT
+    ranked.target_name,
+    ranked.place,
+    ranked.answered_at,
+    standing.class_id,
+    standing.title,
+    standing.word,
+    standing.survival,
+    standing.reason,
+    standing.would_overturn,
+    standing.standing_id,
+    standing.run_id
+FROM (
+    SELECT
+        target.name AS target_name,
+        run.run_id,
+        run.answered_at,
+        row_number() OVER (PARTITION BY target.name ORDER BY run.run_id DESC) AS place
+    FROM run
+    JOIN target ON target.target_id = run.target_id
+    WHERE run.answered_at IS NOT NULL
+) AS ranked
+JOIN standing ON standing.run_id = ranked.run_id;

@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 PACKAGE = Path(__file__).parent.parent / "xmatch"
-GROUND = {"errors", "records", "vocabulary", "assumptions", "constants"}
+GROUND = {"errors", "records", "asking", "units", "vocabulary", "assumptions", "constants"}
 PURE = {"match", "limits", "flux", "spin"}
 MAY_IMPORT = {
     **{name: GROUND for name in GROUND},
@@ -22,10 +22,12 @@ MAY_IMPORT = {
     "catalogs": GROUND | PURE,
     "store": GROUND | {"resources", "__init__"},
     "archives": GROUND | {"__init__"},
-    "demo": GROUND | {"resources", "target", "__init__"},
+    "demo": GROUND | {"resources", "target", "catalogs", "__init__"},
     "plan": GROUND | PURE | {"catalogs"},
     "weigh": GROUND | PURE | {"catalogs", "plan"},
-    "pipeline": GROUND | PURE | {"catalogs", "classes", "archives", "store", "plan", "weigh", "__init__"},
+    "gather": GROUND | PURE | {"catalogs", "archives", "store", "plan", "weigh"},
+    "pipeline": GROUND | PURE | {"catalogs", "classes", "archives", "store", "plan", "gather", "weigh", "__init__"},
+    "inspection": GROUND | PURE | {"catalogs", "archives", "store"},
     "report": GROUND | PURE | {"catalogs", "position", "__init__"},
 }
 HEAVY = {"numpy", "pandas", "sqlalchemy", "astropy", "astroquery", "pyvo", "scipy", "rich", "requests", "matplotlib"}

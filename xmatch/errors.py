@@ -89,12 +89,22 @@ class UnansweredError(ArchiveError):
         Seconds the archive asked us to wait, when it said so.
     http_status : int or None
         HTTP status, when a status line came at all.
+    at_host : bool
+        Whether the host itself cannot be reached, whatever it is asked.
     """
 
-    def __init__(self, message: str, *, retry_after_s: float | None = None, http_status: int | None = None) -> None:
+    def __init__(
+        self,
+        message: str,
+        *,
+        retry_after_s: float | None = None,
+        http_status: int | None = None,
+        at_host: bool = False,
+    ) -> None:
         super().__init__(message)
         self.retry_after_s = retry_after_s
         self.http_status = http_status
+        self.at_host = at_host
 
 
 class MisreadError(ArchiveError):

@@ -17,10 +17,10 @@ from xmatch.assumptions import Assumptions
 from xmatch.catalogs.model import Catalog
 from xmatch.classes.engine import standings
 from xmatch.classes.loader import load_classes
-from xmatch.errors import InterruptedLook, MisreadError
 from xmatch.flux.physical import physical_limit, resolve
-from xmatch.plan import Step, age_s, make_plan, smaller
-from xmatch.records import Look, PhysicalLimit, Reply, ReplyStatus, Rows, Search, Target
+from xmatch.gather import Progress, ask_due, gather, ready, to_ask, waiting_remark
+from xmatch.plan import make_plan
+from xmatch.records import Look, PhysicalLimit, Target
 from xmatch.spin.figures import figures
 from xmatch.weigh import Evidence, expected_chance_total, findings
 
@@ -31,8 +31,6 @@ if TYPE_CHECKING:
 NO_RUN = 0
 """Stands for the run of a look that asked nothing, until its answer turns out to be new."""
 PARTIAL = "only some catalogs were looked at: their searches are kept, this answer is not"
-Progress = Callable[[str, str], None]
-"""Called with the catalog's id and one of ``asking``, ``whole``, ``truncated``, ``unanswered``, ``misread``."""
 
 
 @dataclass(frozen=True)
@@ -84,6 +82,7 @@ def look(
     options = options or LookOptions()
     target_id = store.put_target(target)
     assumptions = resolve(target, options.assumptions)
+    catalogs, waiting = ready(catalogs, store.latest_checks())
     plan = make_plan(
         target,
         catalogs,
@@ -97,8 +96,8 @@ def look(
     how = {"offline": options.offline, "again": options.again}
     due = [step for step in plan if step.ask]
     run_id = store.begin_run(target_id, __version__, how) if due else NO_RUN
-    asked = _ask(due, run_id, target_id, store, transport, progress)
-    evidence = _gather(plan, asked, catalogs, store, now())
+    asked = ask_due(due, run_id, target_id, store, transport, progress, now(), again=options.again)
+    evidence = gather(plan, asked, catalogs, store, now())
     answer = conclude(
         target,
         evidence,
@@ -108,7 +107,7 @@ def look(
         n_asked=len(asked),
         offline=options.offline,
         store_name=store.name,
-        remarks=store.remarks,
+        remarks=(*store.remarks, *waiting_remark(waiting)),
     )
     if options.partial:
         if run_id != NO_RUN:
@@ -127,13 +126,19 @@ def look(
 
 
 def requests_of(
-    target: Target, *, store: Store, catalogs: Mapping[str, Catalog], options: LookOptions | None = None
+    target: Target,
+    *,
+    store: Store,
+    catalogs: Mapping[str, Catalog],
+    transport: Transport,
+    options: LookOptions | None = None,
 ) -> list[str]:
     """Return exactly what a look would send now, in order, without asking and without writing anything."""
     from xmatch.archives.fleet import plan_requests
 
     options = options or LookOptions()
     target_id = store.find_target(target)
+    catalogs, _ = ready(catalogs, store.latest_checks())
     plan = make_plan(
         target,
         catalogs,
@@ -144,7 +149,8 @@ def requests_of(
         again=options.again,
         age_limit_days=options.age_limit_days,
     )
-    return plan_requests([step.question for step in plan if step.ask])
+    due = [step for step in plan if step.ask]
+    return plan_requests(to_ask(due, store, datetime.now(UTC), again=options.again), transport.per_host)
 
 
 def conclude(
@@ -178,107 +184,8 @@ def conclude(
         standings=standings(target, limits, found, spin, assumptions, load_classes()),
         expected_chance=expected_chance_total(found),
         n_asked=n_asked,
-        n_from_store=sum(search.from_store for item in evidence for search in item.searches),
+        n_from_store=sum(search.from_store for item in evidence for search in (*item.searches, *item.logs)),
         offline=offline,
         remarks=tuple(remarks),
         store=store_name,
     )
-
-
-def _ask(
-    steps: Sequence[Step],
-    run_id: int,
-    target_id: int,
-    store: Store,
-    transport: Transport | None,
-    progress: Progress | None,
-) -> dict[tuple[str, str], Search]:
-    """Ask, and store each search the moment it is complete. Returns the last search per catalog and table."""
-    if not steps or transport is None:
-        return {}
-    from xmatch.archives.fleet import ask, ask_all
-    from xmatch.catalogs.door import normalise
-
-    by_table = {(step.catalog.id, step.table.name): step for step in steps}
-    done: dict[tuple[str, str], Search] = {}
-    registered: set[str] = set()
-
-    def keep(reply: Reply) -> None:
-        step = by_table[reply.question.catalog_id, reply.question.table]
-        catalog = step.catalog
-        if catalog.id not in registered:
-            store.put_catalog(
-                catalog.id, catalog.release, catalog.title, catalog.waveband, catalog.fingerprint, catalog.band_list
-            )
-            registered.add(catalog.id)
-        rows: Rows | None = None
-        if reply.status is ReplyStatus.WHOLE:
-            try:
-                rows = normalise(catalog, reply)
-            except MisreadError as fault:
-                reply = replace(reply, status=ReplyStatus.MISREAD, detail=str(fault), columns=None, n_rows=0)
-        done[catalog.id, step.table.name] = store.put_search(run_id, target_id, reply, rows)
-        if progress is not None:
-            progress(catalog.id, str(reply.status))
-
-    try:
-        if progress is not None:
-            for step in steps:
-                progress(step.catalog.id, "asking")
-        for reply in ask_all([step.question for step in steps], transport):
-            keep(reply)
-            step = by_table[reply.question.catalog_id, reply.question.table]
-            question = reply.question
-            # a cut reply is asked again over a smaller cone until it is whole or would miss the counterpart
-            while reply.status is ReplyStatus.TRUNCATED:
-                narrower = smaller(question, step.least_radius_arcsec)
-                if narrower is None:
-                    break
-                question = narrower
-                reply = ask(question, transport)
-                keep(reply)
-    except KeyboardInterrupt:
-        store.finish_run(run_id)
-        raise InterruptedLook(
-            f"stopped by you after {len(done)} of {len(steps)} searches; they are kept, and the next look goes on from them"
-        ) from None
-    return done
-
-
-def _gather(
-    plan: Sequence[Step],
-    asked: Mapping[tuple[str, str], Search],
-    catalogs: Mapping[str, Catalog],
-    store: Store,
-    now: datetime,
-) -> list[Evidence]:
-    """Bring together, per catalog, the rows of its best whole searches and what failed just now."""
-    from xmatch.catalogs.door import join
-
-    evidence = []
-    for catalog in catalogs.values():
-        used: list[Search] = []
-        failed: Search | None = None
-        complete = True
-        for step in (step for step in plan if step.catalog.id == catalog.id):
-            latest = asked.get((catalog.id, step.table.name))
-            if latest is not None and latest.status is ReplyStatus.WHOLE:
-                used.append(latest)
-                continue
-            failed = latest if latest is not None else failed
-            if step.known is not None:
-                used.append(replace(step.known, from_store=True))
-            else:
-                complete = False
-        rows = join(store.rows_of([search.search_id], catalog.band_list) for search in used) if used else None
-        evidence.append(
-            Evidence(
-                catalog=catalog,
-                searches=tuple(used),
-                rows=rows,
-                failed=failed,
-                age_s=max((age_s(search, now) for search in used), default=None),
-                complete=complete and bool(used),
-            )
-        )
-    return evidence

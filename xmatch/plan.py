@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 
 from xmatch.assumptions import Assumptions
-from xmatch.catalogs.model import Catalog, Table
+from xmatch.catalogs.model import LOG_TABLE, Catalog, Table
 from xmatch.limits.coverage import touches
 from xmatch.match.motion import target_motion_sigma_arcsec
 from xmatch.match.separation import separation_arcsec
@@ -30,7 +30,8 @@ class Step:
     """One search of the plan.
 
     ``known`` is the stored search that answers it, if any; ``ask`` says whether the archive is to be
-    asked again; ``least_radius_arcsec`` is the smallest cone that still answers the question.
+    asked again; ``least_radius_arcsec`` is the smallest cone that still answers the question;
+    ``limit_days`` is the age at which an answer is too old.
     """
 
     catalog: Catalog
@@ -39,6 +40,12 @@ class Step:
     least_radius_arcsec: float
     known: Search | None
     ask: bool
+    limit_days: float = 0.0
+
+    @property
+    def is_log(self) -> bool:
+        """Whether it asks where a mission looked, not what it found."""
+        return self.table.name == LOG_TABLE
 
 
 def make_plan(
@@ -86,11 +93,15 @@ def make_plan(
             for table in catalog.tables
             if table.holds is None or touches(position.ra_deg, position.dec_deg, radius, table.holds)
         ]
-        for table in tables:
-            question = catalog.question(table, position.ra_deg, position.dec_deg, radius)
-            known = _answer_in_store(question, least, stored)
+        asked = [(table, catalog.question(table, position.ra_deg, position.dec_deg, radius), least) for table in tables]
+        if catalog.log is not None:
+            log_question = catalog.log_question(position.ra_deg, position.dec_deg, least)
+            asked.append((catalog.log.table, log_question, log_question.radius_arcsec))
+        for table, question, enough in asked:
+            known = _answer_in_store(question, enough, stored)
             fresh = known is not None and age_s(known, now) < limit_days * 86400.0
-            steps.append(Step(catalog, table, question, least, known, ask=not offline and (again or not fresh)))
+            ask = not offline and (again or not fresh)
+            steps.append(Step(catalog, table, question, enough, known, ask, limit_days))
     return tuple(steps)
 
 

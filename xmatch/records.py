@@ -9,12 +9,27 @@ sigma *per axis*, position angles run east of north. ``nan`` means "not measured
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields
 
 import numpy as np
 from numpy.typing import NDArray
 
-# the words are part of the nouns: rooms import both from here
+# the words and what is asked are part of the nouns: rooms import all from here
+from xmatch.asking import (
+    WHOLE_SKY_ARCSEC as WHOLE_SKY_ARCSEC,
+)
+from xmatch.asking import (
+    Column as Column,
+)
+from xmatch.asking import (
+    Question as Question,
+)
+from xmatch.asking import (
+    Reply as Reply,
+)
+from xmatch.asking import (
+    WantedColumn as WantedColumn,
+)
 from xmatch.vocabulary import (
     LimitKind as LimitKind,
 )
@@ -162,77 +177,8 @@ class Band:
 
 
 # ------------------------------------------------------------------------------------------------
-# asking
+# rows
 # ------------------------------------------------------------------------------------------------
-@dataclass(frozen=True)
-class WantedColumn:
-    """A column the reply must (or may) hold, with the unit it must be convertible to."""
-
-    name: str
-    unit: str | None = None
-    required: bool = True
-    low: float | None = None
-    """Smallest plausible value, in ``unit``."""
-    high: float | None = None
-    """Largest plausible value, in ``unit``."""
-
-
-@dataclass(frozen=True)
-class Question:
-    """One cone put to one table of one catalog."""
-
-    catalog_id: str
-    release: str
-    table: str
-    """Short name of the table inside the catalog file."""
-    protocol: str
-    """``cone`` or ``vizier``."""
-    address: str
-    remote_table: str
-    """The archive's own name of the table; empty where the address says it all."""
-    ra_deg: float
-    dec_deg: float
-    radius_arcsec: float
-    columns: tuple[WantedColumn, ...]
-    row_limit: int
-
-
-@dataclass(frozen=True)
-class Column:
-    """One column of a reply: values, unit as served, and which values are missing."""
-
-    values: NDArray[np.generic]
-    unit: str | None
-    missing: Bools
-
-
-@dataclass(frozen=True)
-class Reply:
-    """What one question brought, already judged on its raw bytes.
-
-    ``columns`` is None unless ``status`` is whole or truncated.
-    """
-
-    question: Question
-    status: ReplyStatus
-    detail: str
-    """What was seen, in words; for a failure: the value seen, what is allowed, what to do."""
-    request: str
-    """Exactly what was sent: method, address, body."""
-    asked_at: str
-    """UTC, ISO 8601 with ``Z``."""
-    elapsed_s: float
-    columns: Mapping[str, Column] | None = None
-    n_rows: int = 0
-    http_status: int | None = None
-    retry_after_s: float | None = None
-    sha256: str = ""
-    reply_bytes: int = 0
-    tries: int = 1
-    client: str = ""
-    """Versions of what asked and decoded."""
-
-
 @dataclass(frozen=True)
 class Photometry:
     """Values of one band for all rows of a table, in the band's unit."""
@@ -263,6 +209,38 @@ class Rows:
     flux: Mapping[str, Photometry] = field(default_factory=dict)
     raw: tuple[Mapping[str, object], ...] = ()
     """The rows as served, for the store; empty when read back for a warm answer."""
+
+    def __len__(self) -> int:
+        return len(self.key)
+
+    def chosen(self, keep: Bools) -> Rows:
+        """The rows where ``keep`` is true, in order."""
+        return Rows(
+            key=tuple(key for key, kept in zip(self.key, keep, strict=True) if kept),
+            **{name: getattr(self, name)[keep] for name in _ROW_ARRAYS},
+            flux={
+                name: Photometry(one.value[keep], one.error[keep], one.is_limit[keep])
+                for name, one in self.flux.items()
+            },
+            raw=tuple(row for row, kept in zip(self.raw, keep, strict=True) if kept) if self.raw else (),
+        )
+
+
+_ROW_ARRAYS = tuple(f.name for f in fields(Rows) if f.name not in ("key", "flux", "raw"))
+
+
+@dataclass(frozen=True)
+class Pointings:
+    """Where a mission looked: one entry per pointing, arrays of one length."""
+
+    key: tuple[str, ...]
+    ra_deg: Floats
+    dec_deg: Floats
+    exposure_s: Floats
+    field_radius_arcmin: Floats
+    """How far from its axis the field reaches."""
+    start: tuple[str, ...]
+    instrument: tuple[str, ...]
 
     def __len__(self) -> int:
         return len(self.key)

@@ -13,9 +13,10 @@ import numpy as np
 from xmatch.assumptions import Assumptions
 from xmatch.catalogs.model import Catalog
 from xmatch.flux.physical import observed_flux_cgs
-from xmatch.limits.coverage import covered_fraction
+from xmatch.limits.coverage import SECTORS, Contains, covered_fraction, sides_with_rows
 from xmatch.limits.depth import limit_for_band
 from xmatch.limits.hiding import raise_limit
+from xmatch.limits.pointings import Exposed, exposure_factor, exposures
 from xmatch.limits.pulses import (
     contains_whole_pulse_probability,
     overlaps_pulse_probability,
@@ -28,7 +29,9 @@ from xmatch.records import (
     Candidate,
     Finding,
     Limit,
+    LimitMethod,
     Outcome,
+    Pointings,
     Quantity,
     ReplyStatus,
     Rows,
@@ -38,6 +41,9 @@ from xmatch.records import (
 )
 
 COVERED = 1.0 - 1.0e-9
+ROWS_A_SIDE = 3
+"""Rows in each of eight directions that show a survey reaching a place (our choice: by chance a void of that size
+beside a survey's edge would have to hold none of some 24 rows)."""
 _FAILED = {
     ReplyStatus.TRUNCATED: Outcome.TRUNCATED,
     ReplyStatus.UNANSWERED: Outcome.UNANSWERED,
@@ -60,6 +66,12 @@ class Evidence:
     age_s: float | None
     complete: bool = True
     """Whether every table that may hold rows has a whole answer."""
+    logs: tuple[Search, ...] = ()
+    """The search of the observation log, for a mission that points."""
+    pointings: Pointings | None = None
+    """What the log answered; None without an answer."""
+    contains: Contains | None = None
+    """Says which positions the catalog looked at, from the log or a fetched footprint."""
 
 
 def findings(target: Target, evidence: Sequence[Evidence], assumptions: Assumptions) -> tuple[Finding, ...]:
@@ -101,7 +113,7 @@ def _finding(
 ) -> Finding:
     catalog = item.catalog
     k = assumptions.compatible_sigma
-    fraction = covered_fraction(target.position, catalog.coverage, k)
+    fraction = covered_fraction(target.position, catalog.coverage, k, item.contains)
     base = Finding(
         catalog_id=catalog.id,
         title=catalog.title,
@@ -109,7 +121,7 @@ def _finding(
         release=catalog.release,
         outcome=Outcome.UNANSWERED,
         why="not asked yet: nothing in the store answers, and asking was not allowed",
-        searches=item.searches + ((item.failed,) if item.failed is not None else ()),
+        searches=item.searches + item.logs + ((item.failed,) if item.failed is not None else ()),
         coverage_fraction=fraction,
         age_s=item.age_s,
     )
@@ -117,13 +129,11 @@ def _finding(
         if fraction == 0.0:
             # nothing follows from such an answer anyway, so a failure to get it takes nothing away
             unread = f"; the archive gave no usable answer either ({item.failed.detail})" if item.failed else ""
-            return replace(
-                base, outcome=Outcome.NOT_COVERED, why=f"outside the footprint ({_footprint(catalog)}){unread}"
-            )
+            return replace(base, outcome=Outcome.NOT_COVERED, why=f"{_outside(item)}{unread}")
         if item.failed is not None:
             return replace(base, outcome=_FAILED[item.failed.status], why=item.failed.detail)
         return base
-    word, why = _position_says(item, own, all_weighed, fraction, assumptions)
+    word, why = _position_says(target, item, own, all_weighed, fraction, assumptions)
     limits: tuple[Limit, ...] = ()
     if word.permits_limit and not catalog.is_object_list:
         limits, raised = _limits(target, item, own, fraction, word, assumptions)
@@ -152,6 +162,7 @@ def _with_flux(candidate: Candidate) -> Candidate:
 
 
 def _position_says(
+    target: Target,
     item: Evidence,
     own: Weighed,
     all_weighed: Mapping[str, Weighed],
@@ -168,10 +179,29 @@ def _position_says(
     if catalog.is_object_list:
         return Outcome.COVERAGE_UNKNOWN, f"no listed object at the position{_nearest(item, own)}; a list proves nothing"
     if fraction == 0.0:
-        why = f"outside the footprint ({_footprint(catalog)})"
-        if n:
+        why = _outside(item)
+        if n and catalog.log is None:
             why += f", yet the archive returned {n} rows around it: the footprint in the catalog file needs a check"
         return Outcome.NOT_COVERED, why
+    surrounded = item.rows is not None and _surrounded(target, item.rows, own, assumptions)
+    if fraction is None and surrounded and catalog.log is None:
+        return Outcome.BLANK, (
+            f"{n} rows on all sides of the position show that the catalog reaches here (its footprint was not fetched), none "
+            f"compatible with it{_nearest(item, own)}{_fast(item, own)}"
+        )
+    if fraction is None and catalog.log is not None:
+        return Outcome.COVERAGE_UNKNOWN, (
+            f"no row at the position, but its observation log did not answer{_log_detail(item)}: nothing shows that it "
+            "looked here"
+        )
+    if catalog.log is not None and fraction is not None:
+        seen = _exposed(target, item)
+        if fraction < COVERED:
+            return (
+                Outcome.PARTLY_COVERED,
+                f"fields hold {fraction:.0%} of the error region ({seen}); no row in that part",
+            )
+        return Outcome.BLANK, f"{seen}; {n} rows around the position, none compatible with it{_nearest(item, own)}"
     if fraction is None or n == 0:
         why = "no row at the position, and no row around it either: nothing shows that the catalog reaches here"
         return Outcome.COVERAGE_UNKNOWN, why
@@ -181,6 +211,38 @@ def _position_says(
         Outcome.BLANK,
         f"covered; {n} rows around the position, none compatible with it{_nearest(item, own)}{_fast(item, own)}",
     )
+
+
+def _surrounded(target: Target, rows: Rows, own: Weighed, assumptions: Assumptions) -> bool:
+    """Whether rows lie on all sides, close enough together that no survey's edge runs between them and the position."""
+    hole = assumptions.compatible_sigma * target.position.sigma_major_arcsec
+    return sides_with_rows(target.position, rows.ra_deg, rows.dec_deg, hole, ROWS_A_SIDE) == SECTORS
+
+
+def _outside(item: Evidence) -> str:
+    if item.pointings is not None and item.catalog.log is not None:
+        return (
+            f"no pointing holds the position: {len(item.pointings)} within reach in its observation log, each field taken "
+            f"as {item.catalog.log.field_radius_arcmin:g} arcmin around its axis"
+        )
+    return f"outside the footprint ({_footprint(item.catalog)})"
+
+
+def _log_detail(item: Evidence) -> str:
+    return f" ({item.logs[0].detail})" if item.logs else ""
+
+
+def _exposed(target: Target, item: Evidence) -> str:
+    """The pointings that hold the position, in words."""
+    assert item.pointings is not None
+    seen = exposures(item.pointings, target.position.ra_deg, target.position.dec_deg)
+    if not seen:
+        return "only the edge of a field reaches the error region"
+    best, total = seen[0], sum(one.exposure_s for one in seen)
+    longest = f"{best.exposure_s / 1e3:.3g} ks at {best.off_axis_arcmin:.1f} arcmin off axis ({best.key})"
+    if len(seen) == 1:
+        return f"one pointing holds the position: {longest}"
+    return f"{len(seen)} pointings hold the position, {total / 1e3:.3g} ks in all, the longest {longest}"
 
 
 def _fast(item: Evidence, own: Weighed) -> str:
@@ -234,10 +296,21 @@ def _limits(
     found: list[Limit] = []
     hiding: list[str] = []
     for columns in catalog.bands:
+        if catalog.log is not None and columns.band.depth is None:
+            continue  # neighbours lie in other exposures: they say nothing of this one
         photometry = rows.flux.get(columns.band.name)
-        limit = limit_for_band(columns.band, photometry, assumptions=assumptions)
+        # where a mission pointed, the exposure that holds the position says more than neighbours in other exposures
+        exposed = _longest(target, item) if columns.band.depth is not None else None
+        limit = limit_for_band(
+            columns.band,
+            None if exposed else photometry,
+            assumptions=assumptions,
+            why_none="neighbours lie in other exposures" if exposed else "no neighbours",
+        )
         if limit is None:
             continue
+        if exposed is not None and limit.method is LimitMethod.NOMINAL:
+            limit = _in_exposure(limit, catalog, exposed)
         limit = replace(limit, search_ids=ids, flag="; ".join(flags))
         if photometry is not None and len(rows):
             limit, raised = raise_limit(
@@ -247,6 +320,37 @@ def _limits(
                 hiding.append(f"a bright neighbour hides the position in {columns.band.name} ({limit.flag})")
         found.append(_as_pulse(target, catalog, limit))
     return tuple(found), hiding
+
+
+def _longest(target: Target, item: Evidence) -> Exposed | None:
+    """The pointing with the longest exposure on the position."""
+    if item.pointings is None:
+        return None
+    return next(iter(exposures(item.pointings, target.position.ra_deg, target.position.dec_deg)), None)
+
+
+def _in_exposure(limit: Limit, catalog: Catalog, exposed: Exposed) -> Limit:
+    """A depth on the axis in a reference exposure, at the exposure and angle that the observation log gives."""
+    log = catalog.log
+    assert log is not None
+    factor, effective_s = (
+        float(value)
+        for value in exposure_factor(
+            exposed.exposure_s,
+            exposed.off_axis_arcmin,
+            log.reference_s,
+            log.field_radius_arcmin,
+            log.vignetting_at_edge,
+        )
+    )
+    is_magnitude = limit.band.quantity is Quantity.MAGNITUDE
+    value = limit.value - 2.5 * float(np.log10(factor)) if is_magnitude else limit.value * factor
+    return replace(
+        limit,
+        value=value,
+        note=f"{limit.note}; stated for {log.reference_s / 1e3:.3g} ks on the axis, here {exposed.exposure_s / 1e3:.3g} ks at "
+        f"{exposed.off_axis_arcmin:.1f} arcmin ({exposed.key}), worth {effective_s / 1e3:.3g} ks: {factor:.3g} times the flux",
+    )
 
 
 def _as_pulse(target: Target, catalog: Catalog, limit: Limit) -> Limit:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from dataclasses import replace
+from typing import Any
 
 import numpy as np
 import pytest
@@ -17,6 +18,23 @@ REMOTE = "I/999/main"
 FIRST_ID = 5973000000000000001
 """Above 2**53: a float would change it."""
 N_ROWS = 12
+
+UNITS = {"RA_ICRS": "deg", "DE_ICRS": "deg", "Gmag": "mag"}
+SHAPES: dict[str, tuple[str, str, dict[str, Any]]] = {
+    "cone": (f"/viz-bin/conesearch/{REMOTE}", REMOTE, {}),
+    "vizier": ("/viz-bin/votable", REMOTE, {}),
+    "tap": ("/tap", "invented.objects", {}),
+    "tap box": ("/tap", "invented.objects", {"geometry": "box"}),
+    "tap async": ("/tap", "invented.objects", {"mode": "async"}),
+    "simbad": ("/sim-tap", "basic", {}),
+    "file votable": ("/list", "", {"format": "votable"}),
+    "file csv": ("/list.csv", "", {"format": "csv", "units": UNITS, "rows_at_least": N_ROWS}),
+    "file fits": ("/list.fits", "", {"format": "fits", "rows_at_least": N_ROWS}),
+    "file ecsv": ("/list.ecsv", "", {"format": "ecsv", "rows_at_least": N_ROWS}),
+}
+"""Adapter and how it is asked: path, remote table, further facts of the question."""
+SPOILT = {"simbad": "basic", "file csv": "csv", "file fits": "fits", "file ecsv": "ecsv"}
+"""Which table misbehaves, where it is not the main one."""
 
 Ask = Callable[..., Question]
 
@@ -43,7 +61,21 @@ def table() -> DemoTable:
         "Qflg": np.array(["A & B", "", "<C>"] * 4),
         "Nobs": np.ma.array(np.arange(N_ROWS, dtype=np.int16), mask=[False, False, True] * 4),
     }
-    return DemoTable(REMOTE, columns, rows, "RA_ICRS", "DE_ICRS", HOST, f"/viz-bin/conesearch/{REMOTE}", "Invented.")
+    return DemoTable(
+        REMOTE, columns, rows, "RA_ICRS", "DE_ICRS", HOST, f"/viz-bin/conesearch/{REMOTE}", "Invented.",
+        tap_path="/tap", tap_table="invented.objects", file_path="/list", file_format="votable",
+    )  # fmt: skip
+
+
+@pytest.fixture(scope="session")
+def shapes(table: DemoTable) -> list[DemoTable]:
+    """The same rows as SIMBAD's main table and as files of every format; faults are keyed by their own names."""
+    others = [replace(table, remote_table="basic", tap_path="/sim-tap", tap_table="basic", cone_path="", file_path="")]
+    for form in ("csv", "fits", "ecsv"):
+        others.append(
+            replace(table, remote_table=form, cone_path="", tap_path="", file_path=f"/list.{form}", file_format=form)
+        )
+    return others
 
 
 @pytest.fixture(scope="session")
@@ -51,7 +83,7 @@ def question() -> Ask:
     """Makes a question that the table answers whole, with changes."""
 
     def make(protocol: str = "cone", **changes: object) -> Question:
-        path = "/viz-bin/votable" if protocol == "vizier" else f"/viz-bin/conesearch/{REMOTE}"
+        path, remote, how = SHAPES.get(protocol, SHAPES["cone"])
         wanted = (
             WantedColumn("Source"),
             WantedColumn("RA_ICRS", "deg", low=0.0, high=360.0),
@@ -61,8 +93,8 @@ def question() -> Ask:
             WantedColumn("Nobs"),
         )
         plain = Question(
-            catalog_id="invented", release="1", table="main", protocol=protocol, address=f"https://{HOST}{path}",
-            remote_table=REMOTE, ra_deg=0.0, dec_deg=-20.0, radius_arcsec=300.0, columns=wanted, row_limit=100,
+            catalog_id="invented", release="1", table="main", protocol=protocol.split()[0], address=f"https://{HOST}{path}",
+            remote_table=remote, ra_deg=0.0, dec_deg=-20.0, radius_arcsec=300.0, columns=wanted, row_limit=100, **how,
         )  # fmt: skip
         return replace(plain, **changes)  # type: ignore[arg-type]
 
@@ -70,8 +102,14 @@ def question() -> Ask:
 
 
 @pytest.fixture(scope="session")
-def running(table: DemoTable) -> Iterator[EmbeddedArchive]:
-    with EmbeddedArchive([table]) as archive:
+def spoilt() -> Callable[[str], str]:
+    """The table whose faults an adapter meets."""
+    return lambda protocol: SPOILT.get(protocol, REMOTE)
+
+
+@pytest.fixture(scope="session")
+def running(table: DemoTable, shapes: list[DemoTable]) -> Iterator[EmbeddedArchive]:
+    with EmbeddedArchive([table, *shapes]) as archive:
         yield archive
 
 

@@ -11,12 +11,15 @@ import pytest
 import pyvo
 
 from xmatch.archives.reading import judge
+from xmatch.archives.structure import skeleton_of
+from xmatch.catalogs import load_catalogs
+from xmatch.catalogs.check import Compared, Served, compare
 from xmatch.errors import MisreadError
 from xmatch.records import Question, ReplyStatus, WantedColumn
 
 PYVO, ASTROQUERY, ASTROPY = (Path(str(module.__file__)).parent for module in (pyvo, astroquery, astropy))
 WHOLE, CUT = ReplyStatus.WHOLE, ReplyStatus.TRUNCATED
-POSITION = {"ra_deg": 0.0, "dec_deg": 0.0, "radius_arcsec": 180.0 * 3600.0}
+POSITION = {"ra_deg": 0.0, "dec_deg": 0.0, "radius_arcsec": 179.0 * 3600.0}
 
 
 def asked(remote_table: str = "", limit: int = 5000, *columns: WantedColumn, **place: float) -> Question:
@@ -111,3 +114,31 @@ def test_masked_magnitudes_of_a_stored_reply_are_missing():
     column = judge(raw, 200, "text/xml", asked("I/329/urat1", 5000, WantedColumn("Bmag", "mag"))).columns["Bmag"]
     assert 0 < column.missing.sum() < len(column.values)
     assert np.isfinite(column.values[~column.missing]).all()
+
+
+# ------------------------------------------------------------------------------------------------
+# the catalog files against what archives really served
+# ------------------------------------------------------------------------------------------------
+def test_simbads_own_description_has_every_column_that_its_file_names():
+    raw = (ASTROQUERY / "simbad/tests/data/simbad_basic_columns.xml").read_bytes()
+    columns = judge(raw, 200, "text/xml", asked("", 5000)).columns
+    values = [columns[name].values.tolist() for name in ("column_name", "unit", "ucd", "datatype")]
+    served = [Served(name, unit or None, ucd, datatype) for name, unit, ucd, datatype in zip(*values, strict=True)]
+    catalog = load_catalogs()["simbad-basic"]
+    assert compare(catalog, catalog.wanted_columns(), served) == Compared({}, ())
+
+
+def test_a_stored_answer_of_vizier_spells_the_columns_of_gaia_dr3_as_our_file_does():
+    skeleton = skeleton_of((PYVO / "mivot/tests/data/test.mango_annoter.xml").read_bytes())
+    served = {field.name for table in skeleton.tables for field in table.fields}
+    ours = {column.name for column in load_catalogs()["gaia-dr3"].wanted_columns()}
+    lower = {name.lower() for name in served}
+    assert {name for name in ours if name.lower() in lower} <= served
+    assert len(ours & served) >= 8
+
+
+def test_the_sentinels_of_an_old_archive_are_not_believed():
+    raw = (ASTROQUERY / "ukidss/tests/data/votable.xml").read_bytes()
+    wanted = WantedColumn("jAperMag3", "mag", low=-5.0, high=32.0)
+    with pytest.raises(MisreadError, match=r"lie outside -5 to 32|no unit"):
+        judge(raw, 200, "text/xml", asked("", 5000, wanted))

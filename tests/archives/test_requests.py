@@ -7,7 +7,7 @@ import sys
 
 import pytest
 
-from xmatch.archives import cone, vizier
+from xmatch.archives import cone, filelist, vizier
 from xmatch.archives.fleet import plan_requests
 from xmatch.errors import FactError
 from xmatch.records import WantedColumn
@@ -65,6 +65,33 @@ def test_vizier_is_asked_by_its_form_with_named_columns_one_row_more_and_column_
     ]
 
 
+def test_a_whole_list_is_asked_of_vizier_without_a_centre(question):
+    wanted = (WantedColumn("PSRJ"), WantedColumn("_RAJ2000"), WantedColumn("_DEJ2000"))
+    asked = vizier.request(
+        question("vizier", remote_table="B/psr/psr", radius_arcsec=180.0 * 3600.0, columns=wanted, row_limit=100_000)
+    )
+    assert asked.body is not None
+    assert asked.body.decode().splitlines() == [
+        "-source=B/psr/psr", "-out.max=100001", "-out=PSRJ", "-out.add=_RAJ2000,_DEJ2000", "-out.meta=huUD", "-out.form=mini",
+        "-oc.form=d",
+    ]  # fmt: skip
+
+
+def test_several_tables_of_vizier_go_into_one_form(question):
+    first = question("vizier", remote_table="II/246/out", columns=(WantedColumn("2MASS"), WantedColumn("RAJ2000")))
+    second = question("vizier", remote_table="I/355/gaiadr3", columns=(WantedColumn("Source"), WantedColumn("RAJ2000")))
+    asked = vizier.request_for([first, second])
+    assert asked.body is not None
+    assert asked.body.decode().splitlines()[:3] == [
+        "-source=II/246/out,I/355/gaiadr3", "-out.max=101", "-out=2MASS,RAJ2000,Source",
+    ]  # fmt: skip
+
+
+def test_a_file_is_asked_for_as_it_is(question):
+    asked = filelist.request(question("file csv", address="https://a.example/list.csv?sheet=Main"))
+    assert (asked.method, asked.address, asked.body) == ("GET", "https://a.example/list.csv?sheet=Main", None)
+
+
 def test_the_plan_shows_the_requests_and_asks_nothing(question, archive):
     texts = plan_requests([question("cone"), question("vizier")])
     assert texts[0].startswith("GET https://vizier.cds.unistra.fr/viz-bin/conesearch/I/999/main?RA=0&DEC=-20&")
@@ -73,7 +100,7 @@ def test_the_plan_shows_the_requests_and_asks_nothing(question, archive):
 
 
 def test_an_unknown_protocol_is_a_fault_of_the_catalog_file(question):
-    with pytest.raises(FactError, match="'gopher' is not known; use one of cone, vizier"):
+    with pytest.raises(FactError, match="'gopher' is not known; use one of cone, file, simbad, tap, vizier"):
         plan_requests([question(protocol="gopher")])
 
 

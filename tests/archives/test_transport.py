@@ -43,6 +43,15 @@ def test_the_deadline_holds_where_no_single_read_times_out(archive, fault):
     assert 0.25 < time.monotonic() - begin < 3.0  # the drip alone would take a minute
 
 
+def test_a_socket_that_gives_up_at_the_deadline_is_the_deadline_and_no_further_try(archive, waits):
+    archive.misbehave("*", Fault("delay", seconds=60.0))
+    polite = Politeness(read_s=0.1, deadline_s=10.0)
+    clock = lambda: 10.0 if archive.requests else 0.0  # noqa: E731 - the deadline passes while the archive is silent
+    with pytest.raises(UnansweredError, match=r"deadline of 10 s"):
+        Transport(addresses=archive.address, politeness=polite, sleep=waits.append, clock=clock).fetch(cone_request())
+    assert (len(archive.requests), waits) == (1, [])
+
+
 def test_silence_is_a_time_out_and_is_tried_again(archive, waits):
     archive.misbehave("*", Fault("delay", seconds=60.0))
     polite = Politeness(read_s=0.1, deadline_s=10.0, max_tries=2)

@@ -23,15 +23,8 @@ def written(folder: Path, text: str, name: str = "2mass-psc") -> Path:
 
 def test_every_waveband_of_the_main_street_is_there() -> None:
     registry = load_catalogs()
-    assert len(registry) >= 9
-    assert {catalog.waveband for catalog in registry.values()} == {
-        Waveband.SOFT_XRAY,
-        Waveband.OPTICAL,
-        Waveband.NEAR_INFRARED,
-        Waveband.MID_INFRARED,
-        Waveband.RADIO,
-        Waveband.OBJECT_LIST,
-    }
+    assert len(registry) == 49
+    assert {catalog.waveband for catalog in registry.values()} == set(Waveband)
 
 
 def test_order_is_that_of_falling_energy() -> None:
@@ -72,7 +65,7 @@ def test_wanted_columns_hold_each_name_once() -> None:
     for catalog in load_catalogs().values():
         names = [column.name for column in catalog.wanted_columns()]
         assert len(names) == len(set(names)), catalog.id
-        assert {catalog.key, catalog.ra, catalog.dec} <= set(names)
+        assert {catalog.key, catalog.ra, catalog.dec} - {None} <= set(names)
 
 
 def test_sexagesimal_tables_are_asked_for_decimal_positions() -> None:

@@ -13,6 +13,7 @@ from typing import Any
 
 import pytest
 
+from xmatch.catalogs import load_catalogs
 from xmatch.cli import COMMANDS, EXIT_FAULT, EXIT_INTERRUPTED
 from xmatch.demo.faults import Fault
 from xmatch.demo.sky import BUILT_TO_SHOW
@@ -20,6 +21,9 @@ from xmatch.resources import fixture_path
 
 TARGET = str(fixture_path("demo/tern-4.toml"))
 HERE = "17:38:01.50 -33:48:57.0"
+
+CONFIRMED = {name: str(BUILT_TO_SHOW[name]) for name, catalog in load_catalogs().items() if not catalog.needs_check}
+"""What a first look shows: catalogs whose columns nobody has confirmed wait for a check."""
 
 
 def run(*args: str, **env: str) -> subprocess.CompletedProcess[str]:
@@ -91,14 +95,20 @@ def test_the_position_is_echoed_in_both_notations_before_anything_is_asked(archi
     first = done.stderr.splitlines()[0]
     assert "17:38:01.50" in first and "264.506250" in first
     assert not archive.requests
-    assert "-source=I/355/gaiadr3" in done.stdout
+    assert "I/355/gaiadr3" in done.stdout
+    shown = [block for block in done.stdout.split("\n\n") if block.startswith(("GET ", "POST "))]
+    looked = run("look", HERE, "--json", BLANKFIELD_ARCHIVES=archive.address)
+    assert looked.returncode == 0, looked.stderr
+    assert len(archive.requests) == len(shown)
+    asked = sorted(request.body.splitlines()[0] for request in archive.requests if request.body.startswith("-source"))
+    assert asked == sorted(line for line in done.stdout.splitlines() if line.startswith("-source"))
 
 
 def test_look_answers_and_a_second_look_needs_no_archive(archive: Any) -> None:
     first = run("look", TARGET, "--json", BLANKFIELD_ARCHIVES=archive.address)
     assert first.returncode == 0, first.stderr
     said = {finding["catalog_id"]: finding["outcome"] for finding in json.loads(first.stdout)["findings"]}
-    assert said == {name: str(word) for name, word in BUILT_TO_SHOW.items()}
+    assert said == CONFIRMED
     asked = len(archive.requests)
     second = run("look", TARGET, BLANKFIELD_ARCHIVES=archive.address)
     assert second.returncode == 0, second.stderr
@@ -116,7 +126,57 @@ def test_the_same_position_on_the_command_line(archive: Any) -> None:
     assert done.returncode == 0, done.stderr
     answer = json.loads(done.stdout)
     assert answer["target"]["name"] == "mine"
+    assert {f["catalog_id"]: f["outcome"] for f in answer["findings"]} == CONFIRMED
+
+
+def test_the_demo_shows_every_catalog() -> None:
+    answer = json.loads(run("demo", "--json").stdout)
     assert {f["catalog_id"]: f["outcome"] for f in answer["findings"]} == {k: str(v) for k, v in BUILT_TO_SHOW.items()}
+    assert not answer["remarks"]
+
+
+def test_catalogs_wait_for_a_check_and_are_unlocked_by_it(archive: Any) -> None:
+    done = run("catalogs", "check", "glostar", "nvss", BLANKFIELD_ARCHIVES=archive.address)
+    assert done.returncode == 0, done.stderr
+    assert [line.split(":")[0] for line in done.stdout.splitlines()] == ["glostar  good", "nvss     good"]
+    assert "phot.flux.density;em.radio.3-6GHz is Speak1" in done.stdout
+    looked = run(
+        "look", TARGET, "--only", "glostar", "--only", "lotss-dr3", "--json", BLANKFIELD_ARCHIVES=archive.address
+    )
+    answer = json.loads(looked.stdout)
+    assert [f["catalog_id"] for f in answer["findings"]] == ["glostar"]
+    assert any("1 catalog was not asked" in remark and "lotss-dr3" in remark for remark in answer["remarks"])
+
+
+def test_a_service_that_drifted_or_fell_silent_is_named_and_exits_with_1(archive: Any) -> None:
+    archive.misbehave("VIII/65/nvss", Fault("renamed column", column="S1.4", to="S14"))
+    archive.misbehave("II/246/out", Fault("unavailable"))
+    done = run("catalogs", "check", "nvss", "2mass-psc", "gaia-dr3", "--json", BLANKFIELD_ARCHIVES=archive.address)
+    assert done.returncode == 1
+    said = {r["id"]: (r["verdict"], r["detail"]) for r in json.loads(done.stdout)}
+    assert said["nvss"] == ("drift", "main: column 'S1.4' is not served; near it: S14, e_S1.4")
+    assert said["2mass-psc"][0] == "unanswered"
+    assert said["gaia-dr3"][0] == "good"
+
+
+def test_lists_are_mirrored_and_footprints_too(archive: Any) -> None:
+    done = run("catalogs", "mirror", "atnf-psr", "nvss", BLANKFIELD_ARCHIVES=archive.address)
+    assert (done.returncode, done.stdout) == (0, "atnf-psr: list: 2500 rows kept\n")
+    nothing = run("catalogs", "mirror", "nvss", BLANKFIELD_ARCHIVES=archive.address)
+    assert "nothing to fetch" in nothing.stdout
+    failed = run("catalogs", "mirror", "galex-guvcat-ais", BLANKFIELD_ARCHIVES=archive.address)
+    assert failed.returncode == 1
+    assert "galex-guvcat-ais: footprint not kept: HTTP 404" in failed.stdout
+
+
+def test_a_catalog_of_ones_own(tmp_path: Path) -> None:
+    made = run("catalogs", "new", "my-survey", "--folder", str(tmp_path))
+    assert made.returncode == 0, made.stderr
+    shown = run("catalogs", "--catalog-folder", str(tmp_path), "show", "my-survey")
+    assert "waits for a check" in shown.stdout
+    again = run("catalogs", "new", "my-survey", "--folder", str(tmp_path))
+    assert again.returncode == 2 and "left alone" in again.stderr
+    assert run("catalogs", "new", "My Survey").returncode == 2
 
 
 def test_the_demo_is_whole_and_says_that_it_is_invented() -> None:
@@ -136,9 +196,9 @@ def test_the_demo_shows_trouble_as_trouble() -> None:
 def test_catalogs_are_listed_and_shown() -> None:
     listed = run("catalogs")
     assert listed.returncode == 0 and all(name in listed.stdout for name in BUILT_TO_SHOW)
-    shown = run("catalogs", "2mass-psc")
+    shown = run("catalogs", "show", "2mass-psc")
     assert "2006AJ....131.1163S" in shown.stdout and "1594" in shown.stdout
-    assert run("catalogs", "nonsense").returncode == 2
+    assert run("catalogs", "show", "nonsense").returncode == 2
     assert len(json.loads(run("catalogs", "--json").stdout)) == len(BUILT_TO_SHOW)
 
 
@@ -199,11 +259,12 @@ def wait_for(condition: Any, seconds: float = 20.0) -> None:
 
 def test_ctrl_c_exits_cleanly_with_what_was_learnt(archive: Any, tmp_path: Path) -> None:
     store = tmp_path / "stopped.sqlite"
-    archive.misbehave("VIII/65/nvss", Fault("delay", seconds=30.0))
+    archive.misbehave("fermilpsc", Fault("delay", seconds=30.0))
+    n_logs = sum(catalog.log is not None and not catalog.needs_check for catalog in load_catalogs().values())
     process = started(archive, store)
     assert process.stderr is not None
     seen = ""
-    while "atnf-psr: whole" not in seen or seen.count(": whole") < 8:
+    while seen.count(": whole") < len(CONFIRMED) + n_logs - 1:
         seen += process.stderr.readline()
     process.send_signal(signal.SIGINT)
     _, rest = process.communicate(timeout=15)

@@ -13,6 +13,7 @@ import pytest
 from xmatch import records
 from xmatch.resources import db_path
 from xmatch.store import schema
+from xmatch.store.schema_lists import CheckVerdict
 from xmatch.store.store import open_store
 
 HEADING = re.compile(r"^### (\w+)$", re.MULTILINE)
@@ -58,7 +59,7 @@ def test_the_readme_lists_the_words(raw: sqlite3.Connection) -> None:
     readme = db_path("README.md").read_text(encoding="utf-8")
     for words in (
         records.Waveband, records.Quantity, records.MagnitudeSystem, records.ReplyStatus, records.Outcome,
-        records.LimitKind, records.LimitMethod, records.StandingWord,
+        records.LimitKind, records.LimitMethod, records.StandingWord, CheckVerdict,
     ):  # fmt: skip
         assert f"| {', '.join(word.value for word in words)} |" in readme, words
 
@@ -71,7 +72,7 @@ def test_every_real_number_has_a_unit() -> None:
 
 
 def test_the_file_says_whose_it_is(raw: sqlite3.Connection) -> None:
-    assert raw.execute("PRAGMA user_version").fetchone() == (1,)
+    assert raw.execute("PRAGMA user_version").fetchone() == (schema.SCHEMA_VERSION,)
     assert raw.execute("PRAGMA application_id").fetchone()[0].to_bytes(4, "big") == b"BLKF"
     assert raw.execute("PRAGMA journal_mode").fetchone() == ("wal",)
 
@@ -157,8 +158,8 @@ def test_the_rows_of_a_search_are_found_without_a_scan_or_a_sort(raw: sqlite3.Co
 def test_the_views_run_on_an_empty_store(raw: sqlite3.Connection) -> None:
     names = [name for (name,) in raw.execute("SELECT name FROM sqlite_master WHERE type = 'view'")]
     assert sorted(names) == [
-        "current_candidate", "current_finding", "current_limit", "current_luminosity_limit", "current_run",
-        "current_search", "current_standing",
-    ]  # fmt: skip
+        "current_candidate", "current_finding", "current_limit", "current_luminosity_limit", "current_row",
+        "current_run", "current_search", "current_standing", "standing_history",
+    ]  # fmt: skip  # fmt: skip
     for name in names:
         assert raw.execute(f"SELECT * FROM {name}").fetchall() == []

@@ -14,8 +14,8 @@ import pytest
 
 from xmatch.errors import RangeError, StoreError
 from xmatch.records import MagnitudeSystem, Position, Quantity, ReplyStatus, Spin
+from xmatch.store import cones
 from xmatch.store.store import open_store
-from xmatch.store.writing import healpix
 
 ARRAYS = (
     "ra_deg", "dec_deg", "sigma_major_arcsec", "sigma_minor_arcsec", "angle_deg", "epoch_yr", "pm_ra_mas_yr",
@@ -199,7 +199,7 @@ def test_the_index_on_the_sky_is_that_of_gorski() -> None:
     # last quarters in the north and south (Gorski et al. 2005, ApJ 622, 759, section 4 and fig. 4).
     ra = np.array([45.0, 0.0, 45.0, 315.0, 315.0, 180.0])
     dec = np.array([41.8, 0.0, -41.8, 41.8, -41.8, 0.0])
-    index = healpix(ra, dec)
+    index = cones.index(ra, dec)
     assert index.dtype == np.int64
     np.testing.assert_array_equal(index >> 58, [0, 4, 8, 3, 11, 6])
     assert index.min() >= 0 and index.max() < 12 * 4**29

@@ -16,11 +16,9 @@ from multiprocessing.connection import Connection
 from multiprocessing.synchronize import Barrier
 
 import builders
-import numpy as np
 
 from xmatch.records import ReplyStatus, Search
 from xmatch.store.store import open_store
-from xmatch.store.writing import healpix
 
 WAIT_S = 60.0
 SIZES = (0, 3, 40, 400, 1)
@@ -50,8 +48,6 @@ def tell(path: str, there: Connection) -> None:
 
 
 def nursery() -> None:
-    # everything is imported before the writers are forked, so that they die writing and not importing
-    healpix(np.zeros(1), np.zeros(1))
     fork = multiprocessing.get_context("fork")
     say("ready")
     for line in sys.stdin:

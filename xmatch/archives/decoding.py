@@ -14,6 +14,7 @@ from xmatch.archives.structure import FieldHead, Skeleton, TableHead
 from xmatch.archives.words import plain
 from xmatch.errors import MisreadError
 from xmatch.records import Bools, Column, Floats, Question, WantedColumn
+from xmatch.units import unit_factor
 
 IMPLAUSIBLE_FRACTION = 0.05
 """Fraction of values outside their plausible range from which a column is not believed (our choice)."""
@@ -26,8 +27,8 @@ _CLIPPED, _NO_NUMBER = "W51", "W30"
 _QUOTED = re.compile(r"'(.*)'")
 _NO_VALUE = frozenset({"-", "--", "null", "none", "n/a", "...", "nan"})
 """What archives write in number columns where there is no number."""
-_UNIT_FORMATS = (None, "cds", "vounit")
-"""Spellings that archives use, in the order tried; None is astropy's own."""
+
+_DATATYPE = {"U": "char", "i": "long", "u": "long", "f": "double", "b": "boolean"}
 
 # astropy's parser and its warning filters belong to the whole process
 _decoding = Lock()
@@ -82,6 +83,30 @@ def decode(raw: bytes, skeleton: Skeleton, table: TableHead, question: Question)
     return columns, f" ({left_out} array columns left out)" if left_out else ""
 
 
+def check_list(columns: dict[str, Column], question: Question) -> dict[str, Column]:
+    """Hold the columns of a list that is no VOTable against the question, as :func:`decode` does for a table.
+
+    Raises
+    ------
+    MisreadError
+        As :func:`decode`.
+    """
+    heads = [
+        FieldHead(name, _DATATYPE[column.values.dtype.kind], column.unit, "", None, "")
+        for name, column in columns.items()
+    ]
+    table = TableHead("", "", "", False, True, None, 0, fields=heads)
+    places = _places_of(table, question)
+    for wanted, place in places.items():
+        _check_unit(wanted, heads[place], question)
+    names = _names(table, {place: wanted.name for wanted, place in places.items()})
+    served = list(columns.values())
+    found = {name: served[place] for place, name in names.items()}
+    for wanted in places:
+        _check_plausible(wanted, found[wanted.name])
+    return found
+
+
 def _places_of(table: TableHead, question: Question) -> dict[WantedColumn, int]:
     """Where each wanted column stands. Case is ignored: archives change it between releases."""
     places: dict[WantedColumn, int] = {}
@@ -124,7 +149,8 @@ def _unit_of(served: FieldHead, question: Question) -> str | None:
     """Unit as served. The cone-search standard fixes degrees for the main position, so it may go unsaid there."""
     if served.unit is None and question.protocol == "cone" and served.ucd.lower() in _MAIN_POSITION_UCDS:
         return "deg"
-    return served.unit
+    # a unit that the catalog file states stands only where the archive states none
+    return served.unit or question.units.get(served.name)
 
 
 def _check_unit(wanted: WantedColumn, served: FieldHead, question: Question) -> None:
@@ -136,30 +162,11 @@ def _check_unit(wanted: WantedColumn, served: FieldHead, question: Question) -> 
             f"column {wanted.name!r} comes as text in {unit or 'no unit'}, where numbers in {wanted.unit} are wanted; "
             "the archive changed or the catalog file is wrong"
         )
-    if _factor(unit, wanted.unit) is None:
+    if unit_factor(unit, wanted.unit) is None:
         raise MisreadError(
             f"column {wanted.name!r} comes in {plain(unit, 30) if unit else 'no unit'}, which cannot be converted to "
             f"{wanted.unit}; the archive changed or the catalog file is wrong"
         )
-
-
-def _factor(served: str | None, wanted: str) -> float | None:
-    """What turns the served unit into the wanted one; None when nothing does."""
-    if served == wanted:
-        return 1.0
-    if served is None:
-        return None
-    import astropy.units as u
-
-    for form in _UNIT_FORMATS:
-        try:
-            unit = u.Unit(served, format=form, parse_strict="silent")
-            # logarithmic units would be taken for a factor, and are none
-            if isinstance(unit, u.UnitBase):
-                return float(unit.to(u.Unit(wanted)))
-        except (ValueError, TypeError, u.UnitsError):
-            continue
-    return None
 
 
 def _values(raw: bytes, skeleton: Skeleton, table: TableHead) -> list[Any]:
@@ -170,9 +177,10 @@ def _values(raw: bytes, skeleton: Skeleton, table: TableHead) -> list[Any]:
         warnings.simplefilter("always")
         from astropy.io import votable
 
+        alone = _alone(raw, skeleton, table)
         try:
-            parsed = votable.parse(io.BytesIO(raw), verify="warn", invalid="exception")
-            found = list(parsed.iter_tables())[table.position]
+            parsed = votable.parse(io.BytesIO(alone or raw), verify="warn", invalid="exception")
+            found = list(parsed.iter_tables())[0 if alone else table.position]
             values = [found.array[served.ID] for served in found.fields]
         except Exception as fault:  # the parser raises many kinds: whatever they are, there are no rows to trust
             raise MisreadError(
@@ -186,6 +194,15 @@ def _values(raw: bytes, skeleton: Skeleton, table: TableHead) -> list[Any]:
             f"{len(values[0]) if values else 0} of {len(values)}; ask again later"
         )
     return values
+
+
+def _alone(raw: bytes, skeleton: Skeleton, table: TableHead) -> bytes | None:
+    """A VOTable of this table only, so that an answer of many tables is not parsed once for each; None if it must be."""
+    plain_tags = raw[table.begin : table.begin + 6] == b"<TABLE" and raw[table.end : table.end + 8] == b"</TABLE>"
+    if len(skeleton.tables) < 2 or table.depth != 1 or not plain_tags:
+        return None
+    element = raw[table.begin : table.end] + b"</TABLE>"
+    return raw[: skeleton.body_begin] + b"<RESOURCE>" + element + b"</RESOURCE></VOTABLE>"
 
 
 def _check_warning(code: str, text: str, table: TableHead) -> None:
@@ -254,12 +271,14 @@ def _present(column: Column, wanted: WantedColumn) -> Floats:
     if column.values.dtype.kind not in "iufb":
         raise MisreadError(f"column {wanted.name!r} holds text where numbers are wanted; check the catalog file")
     values = column.values[~column.missing].astype(np.float64)
-    factor = 1.0 if wanted.unit is None else _factor(column.unit, wanted.unit)
+    factor = 1.0 if wanted.unit is None else unit_factor(column.unit, wanted.unit)
     return values * (1.0 if factor is None else factor)
 
 
 def _check_place(columns: dict[str, Column], question: Question) -> None:
     """Rows must lie where they were asked for: a table in hours of right ascension passes every other check."""
+    if question.is_whole or question.protocol == "file":
+        return
     ra = [wanted for wanted in question.columns if (wanted.unit, wanted.low, wanted.high) == ("deg", 0.0, 360.0)]
     dec = [wanted for wanted in question.columns if (wanted.unit, wanted.low, wanted.high) == ("deg", -90.0, 90.0)]
     if len(ra) != 1 or len(dec) != 1 or not {ra[0].name, dec[0].name} <= columns.keys():
@@ -268,11 +287,13 @@ def _check_place(columns: dict[str, Column], question: Question) -> None:
     if not both.any():
         return
     ra_deg, dec_deg = (
-        columns[wanted.name].values[both].astype(np.float64) * (_factor(columns[wanted.name].unit, "deg") or 1.0)
+        columns[wanted.name].values[both].astype(np.float64) * (unit_factor(columns[wanted.name].unit, "deg") or 1.0)
         for wanted in (ra[0], dec[0])
     )
+    # a box around the cone holds corners that are cut on this side
+    reach = 1.1 if question.geometry == "circle" else 2.0
     separation = _separation_arcsec(question.ra_deg, question.dec_deg, ra_deg, dec_deg)
-    outside = separation > 1.1 * question.radius_arcsec + ELSEWHERE_MARGIN_ARCSEC
+    outside = separation > reach * question.radius_arcsec + ELSEWHERE_MARGIN_ARCSEC
     if outside.mean() > IMPLAUSIBLE_FRACTION:
         raise MisreadError(
             f"{outside.sum()} of {both.sum()} rows lie outside the cone, the farthest "

@@ -67,9 +67,13 @@ def fault_of(
     """Turn a fault of the client library into one of ours, or into a reason to try again."""
     reason = reason_of(fault)
     if isinstance(fault, requests.exceptions.SSLError):
-        return UnansweredError(f"the connection is not secure: {reason}; check the certificates of this machine")
+        return UnansweredError(
+            f"the connection is not secure: {reason}; check the certificates of this machine", at_host=True
+        )
     if isinstance(fault, requests.exceptions.ProxyError):
-        return UnansweredError(f"the proxy did not connect: {reason}; check HTTP_PROXY, HTTPS_PROXY and NO_PROXY")
+        return UnansweredError(
+            f"the proxy did not connect: {reason}; check HTTP_PROXY, HTTPS_PROXY and NO_PROXY", at_host=True
+        )
     if isinstance(fault, requests.exceptions.ContentDecodingError):
         return MisreadError(f"the answer cannot be decompressed: {reason}; ask again later")
     if status is not None and isinstance(fault, requests.exceptions.ConnectionError) and _is_timeout(fault):
@@ -81,12 +85,23 @@ def fault_of(
     if status is not None:
         return AgainError(MisreadError(f"the answer was cut after {got} bytes: {reason}; ask again"))
     if isinstance(fault, requests.exceptions.ConnectTimeout):
-        return AgainError(UnansweredError(f"no connection within {connect_s:g} s; ask again later"))
+        return AgainError(UnansweredError(f"no connection within {connect_s:g} s; ask again later", at_host=True))
     if isinstance(fault, requests.exceptions.ReadTimeout):
         return AgainError(UnansweredError(f"time-out: connected, but nothing came for {read_s:g} s; ask again later"))
     if isinstance(fault, requests.exceptions.ConnectionError):
-        return AgainError(UnansweredError(f"no connection: {reason}; check the network, or ask again later"))
+        return AgainError(
+            UnansweredError(
+                f"no connection: {reason}; check the network, or ask again later", at_host=_never_connected(fault)
+            )
+        )
     return UnansweredError(f"the question could not be sent: {reason}; check the address in the catalog file")
+
+
+def _never_connected(fault: requests.RequestException) -> bool:
+    """Whether no connection came about: the host's affair, whatever was asked."""
+    inner = fault.args[0] if fault.args else None
+    reason = getattr(inner, "reason", inner)
+    return type(reason).__name__ in ("NewConnectionError", "NameResolutionError", "ConnectTimeoutError")
 
 
 def _is_timeout(fault: requests.RequestException) -> bool:

@@ -9,10 +9,11 @@ late error for success; astroquery's VizieR client takes an HTML page for no row
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
-from xmatch.archives.structure import Info, Skeleton, TableHead, skeleton_of
+from xmatch.archives.structure import FieldHead, Info, Skeleton, TableHead, skeleton_of
 from xmatch.archives.words import plain, seen, title_of
 from xmatch.errors import MisreadError, UnansweredError
 from xmatch.records import Column, Question, ReplyStatus
@@ -46,19 +47,36 @@ class Judged:
     n_rows: int
 
 
-def judge(raw: bytes, http_status: int, content_type: str, question: Question) -> Judged:
+class Answer:
+    """The bytes of one answer, whose skeleton is read once for all the tables in it."""
+
+    def __init__(self, raw: bytes) -> None:
+        self.raw = raw
+        self.body = raw.lstrip(b"\xef\xbb\xbf \t\r\n")
+
+    @cached_property
+    def skeleton(self) -> Skeleton:
+        """What the answer says of itself; raises as :func:`~xmatch.archives.structure.skeleton_of`."""
+        return skeleton_of(self.body)
+
+
+def judge(
+    raw: bytes | Answer, http_status: int, content_type: str, question: Question, *, bundled: bool = False
+) -> Judged:
     """Judge one reply and decode its columns.
 
     Parameters
     ----------
-    raw : bytes
-        The whole body.
+    raw : bytes or Answer
+        The whole body; as an answer where several questions share it.
     http_status : int
         HTTP status.
     content_type : str
         As the archive declares it; only shown, because archives often declare it wrongly.
     question : Question
         What was asked: the table, its columns with unit and plausible range, and the row limit.
+    bundled : bool
+        Whether other tables were asked for in the same request: what is said of another table is then not said of this.
 
     Returns
     -------
@@ -72,8 +90,9 @@ def judge(raw: bytes, http_status: int, content_type: str, question: Question) -
     MisreadError
         Everything else that must not be read as data.
     """
-    _check_http(raw, http_status)
-    body = raw.lstrip(b"\xef\xbb\xbf \t\r\n")
+    answer = raw if isinstance(raw, Answer) else Answer(raw)
+    body = answer.body
+    _check_http(answer.raw, http_status)
     if not body:
         raise MisreadError("the answer is empty, without even a table's head; ask again later")
     if _HTML_START.match(body[:4096]):
@@ -81,14 +100,17 @@ def judge(raw: bytes, http_status: int, content_type: str, question: Question) -
             f"a web page came instead of a table{_named(title_of(body))}; "
             "the archive may be down for maintenance, or the address has changed: ask again later"
         )
+    if question.protocol == "file" and question.format != "votable":
+        return _judge_list(answer.raw, question)
     if not body.startswith(b"<") and not body.startswith((b"\xff\xfe", b"\xfe\xff")):
         kind = f" ({plain(content_type, 40)})" if content_type else ""
         raise MisreadError(f"not XML{kind}: begins with {seen(body)}; ask again later")
-    skeleton = skeleton_of(body)
-    _check_statuses(skeleton)
+    skeleton = answer.skeleton
+    _check_statuses(skeleton, question)
     table = _table_of(skeleton, question)
     _check_declared_rows(table)
-    cut = _why_cut(skeleton, table, question)
+    _check_enough(table.rows, question)
+    cut = _why_cut(skeleton.infos_about(table) if bundled else skeleton.infos, table, question)
 
     from xmatch.archives.decoding import decode
 
@@ -144,7 +166,35 @@ def _is_error(info: Info) -> bool:
     return name in _ERROR_NAMES or _status_value(info) == "ERROR"
 
 
-def _check_statuses(skeleton: Skeleton) -> None:
+def heads(raw: bytes, question: Question) -> tuple[FieldHead, ...]:
+    """The fields of the table that answers a question, as declared. The reply must have been judged before."""
+    return tuple(_table_of(Answer(raw).skeleton, question).fields)
+
+
+def _judge_list(raw: bytes, question: Question) -> Judged:
+    """A list in a format that cannot say that it was cut."""
+    from xmatch.archives.decoding import check_list
+    from xmatch.archives.filelist import read_list
+
+    columns = check_list(read_list(raw, question), question)
+    n_rows = max((len(column.values) for column in columns.values()), default=0)
+    _check_enough(n_rows, question)
+    if n_rows > question.row_limit:
+        cut = f"more rows than the limit of {question.row_limit}; raise row_limit in the catalog file"
+        return Judged(ReplyStatus.TRUNCATED, cut, columns, n_rows)
+    return Judged(ReplyStatus.WHOLE, f"whole list: {_rows(n_rows)}, {len(columns)} columns", columns, n_rows)
+
+
+def _check_enough(n_rows: int, question: Question) -> None:
+    """A list fetched whole must hold what it is known to hold."""
+    if n_rows < question.rows_at_least:
+        raise MisreadError(
+            f"the list holds {_rows(n_rows)} where at least {question.rows_at_least} are known; "
+            "it was cut, or the catalog file names another table"
+        )
+
+
+def _check_statuses(skeleton: Skeleton, question: Question) -> None:
     for info in skeleton.infos:
         if _is_error(info):
             raise MisreadError(
@@ -156,7 +206,7 @@ def _check_statuses(skeleton: Skeleton) -> None:
                 f"the archive reports the status {plain(info.value, 40)!r}, which is none of OK, OVERFLOW and ERROR; "
                 "ask again later"
             )
-        if _NO_CENTRE_NOTICE.search(info.value):
+        if _NO_CENTRE_NOTICE.search(info.value) and not question.is_whole:
             raise MisreadError(
                 f"the archive left the position out of the search ({plain(info.value)!r}); "
                 "check how the table is asked in the catalog file"
@@ -206,9 +256,9 @@ def _check_declared_rows(table: TableHead) -> None:
         )
 
 
-def _why_cut(skeleton: Skeleton, table: TableHead, question: Question) -> str:
+def _why_cut(infos: Sequence[Info], table: TableHead, question: Question) -> str:
     """Why the reply is not all there is, or nothing."""
-    for info in skeleton.infos:
+    for info in infos:
         name = info.name.strip().lower()
         if _status_value(info) == "OVERFLOW" or (name == "warning" and _CUT_NOTICE.search(info.value)):
             return f"cut: the archive says {plain(info.says or info.value)!r} after {_rows(table.rows)}"

@@ -107,6 +107,12 @@ class TableHead:
     form: str = ""
     """TABLEDATA, BINARY, BINARY2 or FITS; empty without data."""
     infos: list[Info] = field(default_factory=list)
+    begin: int = 0
+    """Byte at which the element begins."""
+    end: int = 0
+    """Byte at which its end tag begins."""
+    depth: int = 0
+    """Resources around it."""
     empty_integers: list[tuple[int, int]] = field(default_factory=list)
     """Row and field of integer cells without text, which old versions of the format cannot mark as missing."""
 
@@ -118,6 +124,13 @@ class Skeleton:
     version: str
     infos: list[Info]
     tables: list[TableHead]
+    body_begin: int = 0
+    """Byte at which the first resource begins."""
+
+    def infos_about(self, table: TableHead) -> list[Info]:
+        """What is said of a table: beside it in its resource, or of the whole answer, but not of another table."""
+        of_others = {id(info) for other in self.tables if other is not table for info in other.infos}
+        return [info for info in self.infos if id(info) not in of_others]
 
 
 def skeleton_of(raw: bytes) -> Skeleton:
@@ -155,7 +168,7 @@ def skeleton_of(raw: bytes) -> Skeleton:
             f"{'the XML is cut' if cut else 'not XML'}: {words} in line {fault.lineno} "
             f"(begins with {seen(raw)}); ask again later"
         ) from None
-    return Skeleton(reader.version, reader.infos, reader.tables)
+    return Skeleton(reader.version, reader.infos, reader.tables, reader.body_begin)
 
 
 _CUT = frozenset(
@@ -174,6 +187,7 @@ class _Reader:
 
     def __init__(self) -> None:
         self.version = ""
+        self.body_begin = 0
         self.infos: list[Info] = []
         self.tables: list[TableHead] = []
         self.path: list[str] = [""]
@@ -246,6 +260,7 @@ class _Reader:
             if name == "INFO":
                 self.listen()
         elif name == "RESOURCE":
+            self.body_begin = self.body_begin or self.parser.CurrentByteIndex
             self.resources.append((attributes.get("name", ""), attributes.get("type", "")))
             self.latest = None
         elif name == "TABLE":
@@ -298,6 +313,8 @@ class _Reader:
             table.rows = _binary_rows("".join(self.text), self.stream_encoding, table)
             self.hush()
         elif name == "TABLE":
+            if table is not None:
+                table.end = self.parser.CurrentByteIndex
             self.table = None
         elif name == "RESOURCE":
             self.resources.pop()
@@ -314,6 +331,7 @@ class _Reader:
             nrows=attributes.get("nrows"),
             position=len(self.tables),
         )
+        self.table.begin, self.table.depth = self.parser.CurrentByteIndex, len(self.resources)
         self.latest = self.table
         self.tables.append(self.table)
 

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import os
 import random
+import tempfile
 import threading
 import time
 from collections.abc import Callable
@@ -28,6 +29,8 @@ from xmatch.errors import ConfigurationError, TruncatedError, UnansweredError
 ADDRESSES_VARIABLE = "BLANKFIELD_ARCHIVES"
 """Environment variable that sends every request to another address, such as the embedded archive."""
 CHUNK_BYTES = 65_536
+IN_MEMORY_BYTES = 4 * 2**20
+"""Up to here an answer grows in memory (our choice: most are below 1 MB)."""
 BUSY = frozenset({429, 503})
 """HTTP statuses by which an archive asks to be left alone for a while (RFC 6585, RFC 9110)."""
 MAX_REDIRECTS = 5
@@ -55,6 +58,8 @@ class Politeness:
     """First wait between tries; it doubles, with jitter."""
     wait_max_s: float = 8.0
     """Longest wait between tries of our own making."""
+    job_s: float = 300.0
+    """Longest time for a job that an archive works on by itself."""
     patience_s: float = 10.0
     """Longest wait an archive may ask for and get within a look; beyond it the look goes on without."""
 
@@ -66,6 +71,7 @@ class Request:
     method: str
     address: str
     body: bytes | None = None
+    content_type: str | None = None
 
     @property
     def host(self) -> str:
@@ -87,6 +93,8 @@ class Received:
     content_type: str
     body: bytes
     retry_after_s: float | None
+    location: str = ""
+    """Where a redirect points that was not followed, such as to a job just made."""
 
 
 class Stop:
@@ -137,6 +145,9 @@ class Transport:
         variable ``BLANKFIELD_ARCHIVES``, and without it the archives themselves.
     politeness : Politeness, optional
         Time-outs, deadline, size cap, pace and tries.
+    mirrors : bool, optional
+        Whether a host that does not answer is asked for at its mirrors; by default yes, but not when ``addresses`` is this
+        machine.
     sleep, clock, now, jitter : callable, optional
         Waiting, monotonic seconds, UTC time and a number from 0 to 1, for tests.
 
@@ -152,6 +163,7 @@ class Transport:
         addresses: str | None = None,
         politeness: Politeness | None = None,
         *,
+        mirrors: bool | None = None,
         sleep: Callable[[float], None] | None = None,
         clock: Callable[[], float] = time.monotonic,
         now: Callable[[], datetime] = lambda: datetime.now(UTC),
@@ -161,6 +173,7 @@ class Transport:
         self.addresses = _checked_addresses(addresses) if addresses else None
         self.politeness = politeness or Politeness()
         self.user_agent = _user_agent(contact)
+        self.mirrors = not self.is_embedded if mirrors is None else mirrors
         self.clock = clock
         self.now = now
         self._sleep = sleep
@@ -180,7 +193,12 @@ class Transport:
         return None if self.is_embedded else self.politeness.per_host
 
     def fetch(
-        self, request: Request, *, stop: Stop | None = None, on_try: Callable[[int], None] | None = None
+        self,
+        request: Request,
+        *,
+        stop: Stop | None = None,
+        on_try: Callable[[int], None] | None = None,
+        deadline_s: float | None = None,
     ) -> Received:
         """Send one request and bring back the whole body.
 
@@ -192,6 +210,8 @@ class Transport:
             Calls the question off.
         on_try : callable, optional
             Told the number of each try as it starts.
+        deadline_s : float, optional
+            A shorter deadline than that of the politeness, in seconds.
 
         Returns
         -------
@@ -209,7 +229,8 @@ class Transport:
         """
         stop = stop or Stop()
         self._wait_for_turn(request.host, stop)
-        until = self.clock() + self.politeness.deadline_s
+        allowed_s = self.politeness.deadline_s if deadline_s is None else deadline_s
+        until = self.clock() + allowed_s
         retrying = tenacity.Retrying(
             retry=tenacity.retry_if_exception_type(AgainError),
             wait=self._wait_before_next,
@@ -222,10 +243,14 @@ class Transport:
                 with attempt:
                     if on_try is not None:
                         on_try(attempt.retry_state.attempt_number)
-                    return self._try_once(request, until, stop)
+                    return self._try_once(request, until, allowed_s, stop)
         except AgainError as again:
             raise again.fault from None
         raise AssertionError("unreachable: tenacity either returns or raises")
+
+    def pause(self, seconds: float, stop: Stop) -> None:
+        """Wait between two steps, but not beyond a stop."""
+        (self._sleep or stop.pause)(seconds)
 
     def close_session(self) -> None:
         """Close the calling thread's session and its idle connections."""
@@ -255,7 +280,7 @@ class Transport:
             self._next_start[host] = turn + self.politeness.pace_s
         wait_s = turn - self.clock()
         if wait_s > 0.0:
-            (self._sleep or stop.pause)(wait_s)
+            self.pause(wait_s, stop)
 
     def _wait_before_next(self, state: tenacity.RetryCallState) -> float:
         fault = state.outcome.exception() if state.outcome is not None else None
@@ -275,7 +300,7 @@ class Transport:
             or self.clock() + wait_s >= until
         )
 
-    def _try_once(self, request: Request, until: float, stop: Stop) -> Received:
+    def _try_once(self, request: Request, until: float, allowed_s: float, stop: Stop) -> Received:
         polite = self.politeness
         left_s = until - self.clock()
         watch = Watch(left_s)
@@ -285,9 +310,8 @@ class Transport:
         try:
             if stop.called or left_s <= 0.0:
                 raise UnansweredError("called off before it was asked; ask again")
-            with watch, self._send(request, left_s) as response:
+            with watch, self._send(request, left_s) as response, _spool() as whole:
                 status = response.status_code
-                parts = []
                 for part in response.iter_content(CHUNK_BYTES):
                     got += len(part)
                     if got > polite.max_bytes:
@@ -295,32 +319,27 @@ class Transport:
                             f"the answer passed the size cap of {polite.max_bytes} bytes and was left unread; "
                             "ask for a smaller cone"
                         )
-                    parts.append(part)
+                    whole.write(part)
+                whole.seek(0)
                 received = Received(
                     http_status=status,
                     content_type=response.headers.get("Content-Type", ""),
-                    body=b"".join(parts),
+                    body=whole.read(),
                     retry_after_s=retry_after_s(response.headers.get("Retry-After"), self.now()),
+                    location=response.headers.get("Location", ""),
                 )
         except requests.RequestException as fault:
             if stop.called:
                 raise UnansweredError("called off while it was being answered; ask again") from None
-            if watch.fired:
-                raise UnansweredError(
-                    f"no whole answer within the deadline of {polite.deadline_s:g} s ({got} bytes had come); "
-                    "ask again later or allow more time",
-                    http_status=status,
-                ) from None
+            # at the deadline the socket's own time-out and the watch race: both are the deadline
+            if watch.fired or self.clock() >= until:
+                raise _too_late(allowed_s, got, status) from None
             raise fault_of(fault, got, status, polite.connect_s, polite.read_s) from None
         finally:
             stop.forget(watch)
         # a body that ends with the connection looks whole to the client when the watch cut it
         if watch.fired:
-            raise UnansweredError(
-                f"no whole answer within the deadline of {polite.deadline_s:g} s ({got} bytes had come); "
-                "ask again later or allow more time",
-                http_status=status,
-            )
+            raise _too_late(allowed_s, got, status)
         if received.http_status in BUSY:
             raise busy(received.http_status, received.retry_after_s)
         return received
@@ -330,11 +349,25 @@ class Transport:
             request.method,
             request.address,
             data=request.body,
+            headers=None if request.content_type is None else {"Content-Type": request.content_type},
             timeout=(min(self.politeness.connect_s, left_s), min(self.politeness.read_s, left_s)),
             stream=True,
             # a redirected form would be sent on as a plain GET, without the question in it
             allow_redirects=request.method == "GET",
         )
+
+
+def _spool() -> tempfile.SpooledTemporaryFile[bytes]:
+    """Where an answer grows: in memory while it is small, on disk beyond, so that a huge one costs no memory."""
+    return tempfile.SpooledTemporaryFile(max_size=IN_MEMORY_BYTES)
+
+
+def _too_late(deadline_s: float, got_bytes: int, http_status: int | None) -> UnansweredError:
+    return UnansweredError(
+        f"no whole answer within the deadline of {deadline_s:g} s ({got_bytes} bytes had come); "
+        "ask again later or allow more time",
+        http_status=http_status,
+    )
 
 
 def _user_agent(contact: str | None) -> str:

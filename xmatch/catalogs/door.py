@@ -6,7 +6,9 @@ epoch scales, limits stored in flux columns, duplicate listings.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Mapping
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,12 +16,18 @@ from numpy.typing import NDArray
 from xmatch.catalogs.model import BandColumns, Catalog, EpochScale, ErrorMeaning
 from xmatch.errors import MisreadError
 from xmatch.match.ellipse import axes, sigma_from_radial, sigma_from_radius
-from xmatch.records import Bools, Column, Floats, Photometry, Quantity, Reply, Rows
+from xmatch.match.separation import separation_arcsec
+from xmatch.records import Bools, Column, Floats, Photometry, Pointings, Quantity, Question, Reply, Rows
+from xmatch.units import unit_factor
 
 ARCSEC_PER_SECOND_OF_TIME = 15.0
 MJD_J2000 = 51544.5
 JD_MJD = 2400000.5
 DAYS_PER_YEAR = 365.25
+HOURS, DEGREES_PER_HOUR = 24.0, 15.0
+_SEXAGESIMAL = re.compile(
+    r"\s*([+-]?)(\d{1,3}(?:\.\d*)?)(?:[\s:hd]+(\d{1,2}(?:\.\d*)?))?(?:[\s:m']+(\d{1,2}(?:\.\d*)?))?[s\"]?\s*\Z"
+)
 
 
 def normalise(catalog: Catalog, reply: Reply) -> Rows:
@@ -63,7 +71,11 @@ class _Door:
                 f"{self.catalog.id}: column {name!r} is not in the reply, which holds {', '.join(self.columns)}; "
                 "the catalog file needs an update"
             )
-        return self.columns[found]
+        column = self.columns[found]
+        if column.unit is None and name in self.catalog.units:
+            # the file states a unit only where the archive states none
+            return replace(column, unit=self.catalog.units[name])
+        return column
 
     def floats(self, name: str, unit: str | None) -> Floats:
         """Values of a column as floats in ``unit`` (None: as served), missing ones ``nan``."""
@@ -79,22 +91,13 @@ class _Door:
 
     def factor(self, name: str, served: str | None, wanted: str) -> float:
         """Return what turns the served unit into the wanted one; a missing unit is a fault, not a guess."""
-        import astropy.units as u
-
-        if served == wanted:
-            return 1.0
-        try:
-            if not served:
-                raise ValueError("no unit")
-            unit = u.Unit(served)
-            if not isinstance(unit, u.UnitBase):
-                raise TypeError("a logarithmic unit is no factor")
-            return float(unit.to(u.Unit(wanted)))
-        except (ValueError, TypeError, u.UnitConversionError):
+        factor = unit_factor(served, wanted)
+        if factor is None:
             raise MisreadError(
                 f"{self.catalog.id}: column {name!r} came in {served!r}, which cannot be read as {wanted}; "
                 "the archive changed or the catalog file is wrong"
-            ) from None
+            )
+        return factor
 
     def angle_arcsec(self, name: str, dec_deg: Floats | None = None) -> Floats:
         """An error column in arcsec. Seconds of time are allowed for a right-ascension error."""
@@ -105,16 +108,14 @@ class _Door:
 
     def rows(self) -> Rows:
         catalog = self.catalog
-        ra_deg = self.floats(catalog.ra, "deg")
-        dec_deg = self.floats(catalog.dec, "deg")
+        ra_deg, dec_deg = self.position()
         keep = np.isfinite(ra_deg) & np.isfinite(dec_deg)
         for rule in catalog.drop:
             keep &= ~(self.floats(rule.column, None) >= rule.at_least)
         major, minor, angle = self.ellipse(dec_deg)
         pm = self.motion(dec_deg)
-        key = self.column(catalog.key)
         return Rows(
-            key=tuple(_as_text(value) for value in np.asarray(key.values)[keep]),
+            key=self.keys(ra_deg, dec_deg, keep),
             ra_deg=ra_deg[keep] % 360.0,
             dec_deg=dec_deg[keep],
             sigma_major_arcsec=major[keep],
@@ -129,6 +130,26 @@ class _Door:
             raw=self.raw(keep),
         )
 
+    def keys(self, ra_deg: Floats, dec_deg: Floats, keep: Bools) -> tuple[str, ...]:
+        """Names of the rows; the position in degrees where the list gives none."""
+        if self.catalog.key is None:
+            return tuple(f"{ra:.5f}{dec:+.5f}" for ra, dec in zip(ra_deg[keep], dec_deg[keep], strict=True))
+        return tuple(_as_text(value) for value in np.asarray(self.column(self.catalog.key).values)[keep])
+
+    def position(self) -> tuple[Floats, Floats]:
+        """Positions in degrees; text is hours and degrees, and text that is no position is a row without one."""
+        catalog = self.catalog
+        if not catalog.sexagesimal:
+            return self.floats(catalog.ra, "deg"), self.floats(catalog.dec, "deg")
+        ra, dec = ([_as_text(value) for value in self.column(name).values] for name in (catalog.ra, catalog.dec))
+        pairs = np.array([_from_text(*pair) for pair in zip(ra, dec, strict=True)], dtype=float).reshape(-1, 2)
+        if len(pairs) and not np.isfinite(pairs).any():
+            raise MisreadError(
+                f"{catalog.id}: none of {len(pairs)} rows has a position that can be read, such as {ra[0]!r} {dec[0]!r}; "
+                "the list changed its form or the catalog file is wrong"
+            )
+        return pairs[:, 0], pairs[:, 1]
+
     def ellipse(self, dec_deg: Floats) -> tuple[Floats, Floats, Floats]:
         """One-sigma semi-axes and angle, systematic floor added; a missing error falls back to the worst listed."""
         error = self.catalog.error
@@ -138,6 +159,8 @@ class _Door:
         elif error.meaning is ErrorMeaning.ELLIPSE:
             major, minor = (self.angle_arcsec(name) for name in error.columns[:2])
             angle = self.floats(error.columns[2], "deg")
+            if error.level is not None:
+                major, minor = (sigma_from_radius(axis, error.level) for axis in (major, minor))
         elif error.meaning is ErrorMeaning.PER_AXIS:
             sigma_ra = self.angle_arcsec(error.columns[0], dec_deg)
             sigma_dec = self.angle_arcsec(error.columns[1])
@@ -176,6 +199,9 @@ class _Door:
 
     def photometry(self, columns: BandColumns, keep: Bools) -> Photometry:
         unit = columns.band.unit
+        if columns.value is None:
+            nothing = np.full(int(keep.sum()), np.nan)
+            return Photometry(value=nothing, error=nothing.copy(), is_limit=np.zeros(len(nothing), dtype=bool))
         value = self.floats(columns.value, unit)
         if columns.band.quantity is not Quantity.MAGNITUDE:
             # a listed flux of zero or less is a missing measurement in a source list
@@ -197,6 +223,77 @@ class _Door:
         ]
         rows: Iterable[tuple[object, ...]] = zip(*listed, strict=True)
         return tuple(dict(zip(names, row, strict=True)) for row, kept in zip(rows, keep, strict=True) if kept)
+
+
+def pointings_of(catalog: Catalog, reply: Reply) -> Pointings:
+    """Turn the reply of an observation log into pointings.
+
+    Parameters
+    ----------
+    catalog : Catalog
+        A catalog of a mission that points; its ``log`` names the columns.
+    reply : Reply
+        A whole reply of the log.
+
+    Returns
+    -------
+    Pointings
+        Every entry with a position and an exposure above zero; the reach of each field as the catalog file states it.
+
+    Raises
+    ------
+    MisreadError
+        As :func:`normalise`.
+    """
+    log = catalog.log
+    if log is None or reply.columns is None:
+        raise MisreadError(
+            f"{catalog.id}: the reply holds no columns of an observation log ({reply.detail}); ask again"
+        )
+    door = _Door(replace(catalog, units=log.units), reply.columns)
+    ra, dec, exposure = door.floats(log.ra, "deg"), door.floats(log.dec, "deg"), door.floats(log.exposure, "s")
+    keep = np.isfinite(ra) & np.isfinite(dec) & (exposure > 0.0)
+
+    def listed(name: str | None) -> tuple[str, ...]:
+        if name is None:
+            return ("",) * int(keep.sum())
+        return tuple(_as_text(value) for value in np.asarray(door.column(name).values)[keep])
+
+    return Pointings(
+        key=listed(log.key),
+        ra_deg=ra[keep] % 360.0,
+        dec_deg=dec[keep],
+        exposure_s=exposure[keep],
+        field_radius_arcmin=np.full(int(keep.sum()), log.field_radius_arcmin),
+        start=listed(log.start),
+        instrument=listed(log.instrument),
+    )
+
+
+def within(rows: Rows, question: Question) -> Rows:
+    """The rows inside the cone, where the archive gave more: a box around it, or a whole list."""
+    inside = separation_arcsec(question.ra_deg, question.dec_deg, rows.ra_deg, rows.dec_deg) <= question.radius_arcsec
+    return rows if inside.all() else rows.chosen(inside)
+
+
+def _from_text(ra: str, dec: str) -> tuple[float, float]:
+    """Hours and degrees, whatever stands between the numbers; the error in brackets behind the last digits is cut."""
+    hours, degrees = (_numbers(text.partition("(")[0]) for text in (ra, dec))
+    if hours is None or degrees is None or not 0.0 <= hours < HOURS or not -90.0 <= degrees <= 90.0:
+        return np.nan, np.nan
+    return hours * DEGREES_PER_HOUR, degrees
+
+
+def _numbers(text: str) -> float | None:
+    """Hours or degrees from up to three numbers with the sign in front; None where it is no such thing."""
+    found = _SEXAGESIMAL.match(text.replace("\u2212", "-"))
+    if found is None:
+        return None
+    sign = -1.0 if found[1] == "-" else 1.0
+    whole, minutes, seconds = (float(part) if part else 0.0 for part in found.groups()[1:])
+    if minutes >= 60.0 or seconds >= 60.0:
+        return None
+    return sign * (whole + minutes / 60.0 + seconds / 3600.0)
 
 
 def _fill_with_worst(axis: Floats) -> Floats:

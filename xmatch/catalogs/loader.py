@@ -4,14 +4,16 @@ from __future__ import annotations
 
 import hashlib
 import tomllib
-from collections.abc import Iterable, Sequence
-from enum import StrEnum
+from collections.abc import Sequence
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any
 
+from xmatch.catalogs.checked import Checked
 from xmatch.catalogs.model import (
+    LOG_TABLE,
     BandColumns,
     Catalog,
+    Control,
     DropRule,
     EpochFacts,
     EpochScale,
@@ -19,6 +21,7 @@ from xmatch.catalogs.model import (
     ErrorMeaning,
     LimitFlag,
     MotionColumns,
+    PointingLog,
     Table,
 )
 from xmatch.constants import C_CM_S, KEV_HZ
@@ -26,13 +29,24 @@ from xmatch.errors import FactError
 from xmatch.limits.coverage import Region
 from xmatch.records import Band, MagnitudeSystem, Quantity, Waveband
 
-W = TypeVar("W", bound=StrEnum)
-PROTOCOLS = ("cone", "vizier")
+PROTOCOLS = ("cone", "vizier", "tap", "simbad", "file")
+NEED_TABLE = ("vizier", "tap", "simbad")
+"""Protocols whose address alone does not say which table."""
+GEOMETRIES = ("circle", "box")
+"""How a TAP service is asked: by ADQL geometry, or by plain comparisons and a cut of our own."""
+MODES = ("sync", "async")
+POSITIONS = ("decimal", "sexagesimal")
+NEEDS_CHECK = "needs check"
+"""State of a file whose columns nobody has confirmed: it is asked only after a successful check."""
+ROWS_MOC = "/viz-bin/moc/"
+"""Where VizieR serves maps of the rows of its tables."""
+FORMATS = ("csv", "fits", "votable", "ecsv")
 REFRESH = ("frozen", "yearly", "monthly", "rolling")
-COVERAGE_KINDS = ("all sky", "declination", "galactic box", "compilation")
+COVERAGE_KINDS = ("all sky", "declination", "galactic box", "footprint", "pointed", "unstated", "compilation")
+
 UNITS_OF_QUANTITY = {
     Quantity.MAGNITUDE: ("mag",),
-    Quantity.FLUX_DENSITY: ("Jy", "mJy", "uJy"),
+    Quantity.FLUX_DENSITY: ("Jy", "mJy", "uJy", "Jy/beam", "mJy/beam"),
     Quantity.BAND_FLUX: ("erg s-1 cm-2",),
 }
 _TO_HZ = {
@@ -95,98 +109,8 @@ def read_catalog(path: str | Path) -> Catalog:
     return _Reader(path, content, hashlib.sha256(raw).hexdigest()).catalog()
 
 
-class _Reader:
-    """One file being read: keeps the path for messages and collects every source."""
-
-    def __init__(self, path: Path, content: dict[str, Any], fingerprint: str) -> None:
-        self.path = path
-        self.content = content
-        self.fingerprint = fingerprint
-        self.sources: list[str] = []
-
-    # --- small helpers ---------------------------------------------------------------------
-    def fault(self, key: str, seen: object, allowed: str) -> FactError:
-        return FactError(f"{self.path}: {key} = {seen!r} is not allowed; {allowed}")
-
-    def section(self, where: str, content: object, known: Iterable[str]) -> dict[str, Any]:
-        if not isinstance(content, dict):
-            raise self.fault(where, content, "this must be a table of keys")
-        for key in content:
-            if key not in known:
-                raise self.fault(f"{where}.{key}".lstrip("."), content[key], f"known keys are {', '.join(known)}")
-        source = content.get("source")
-        if source is not None:
-            self.source(where, source)
-        return content
-
-    def source(self, where: str, value: object) -> str:
-        if not isinstance(value, str) or not value.strip():
-            raise self.fault(f"{where}.source", value, "give the bibcode, the archive's page, or 'memory'")
-        if value not in self.sources:
-            self.sources.append(value)
-        return value
-
-    def need_source(self, where: str, content: dict[str, Any]) -> str:
-        if "source" not in content:
-            raise self.fault(f"{where}.source", None, "every fact needs a source: bibcode, archive page, or 'memory'")
-        return str(content["source"])
-
-    def text(self, where: str, content: dict[str, Any], key: str, default: str | None = None) -> str:
-        value = content.get(key, default)
-        if not isinstance(value, str) or not value.strip():
-            raise self.fault(f"{where}.{key}".lstrip("."), value, "a non-empty text is needed")
-        return value
-
-    def maybe_text(self, where: str, content: dict[str, Any], key: str) -> str | None:
-        return None if key not in content else self.text(where, content, key)
-
-    def number(
-        self,
-        where: str,
-        content: dict[str, Any],
-        key: str,
-        *,
-        low: float | None = None,
-        high: float | None = None,
-        default: float | None = None,
-    ) -> float:
-        value = content.get(key, default)
-        bounds = f"a number{'' if low is None else f' from {low:g}'}{'' if high is None else f' to {high:g}'} is needed"
-        if isinstance(value, bool) or not isinstance(value, int | float):
-            raise self.fault(f"{where}.{key}".lstrip("."), value, bounds)
-        number = float(value)
-        if number != number or (low is not None and number < low) or (high is not None and number > high):
-            raise self.fault(f"{where}.{key}".lstrip("."), value, bounds)
-        return number
-
-    def maybe_number(
-        self, where: str, content: dict[str, Any], key: str, low: float | None = None, high: float | None = None
-    ) -> float | None:
-        return None if key not in content else self.number(where, content, key, low=low, high=high)
-
-    def choice(self, where: str, content: dict[str, Any], key: str, allowed: Sequence[str]) -> str:
-        value = content.get(key)
-        if value not in allowed:
-            raise self.fault(f"{where}.{key}".lstrip("."), value, f"one of {', '.join(allowed)} is needed")
-        return str(value)
-
-    def word(self, where: str, content: dict[str, Any], key: str, words: type[W]) -> W:
-        return words(self.choice(where, content, key, [str(word) for word in words]))
-
-    def pair(
-        self, where: str, content: dict[str, Any], key: str, low: float, high: float
-    ) -> tuple[float, float] | None:
-        if key not in content:
-            return None
-        value = content[key]
-        good = (
-            isinstance(value, list)
-            and len(value) == 2
-            and all(isinstance(v, int | float) and not isinstance(v, bool) and low <= v <= high for v in value)
-        )
-        if not good:
-            raise self.fault(f"{where}.{key}", value, f"two numbers from {low:g} to {high:g} are needed")
-        return float(value[0]), float(value[1])
+class _Reader(Checked):
+    """The sections of a catalog file."""
 
     # --- sections ----------------------------------------------------------------------------
     def catalog(self) -> Catalog:
@@ -195,7 +119,8 @@ class _Reader:
             self.content,
             (
                 "id", "title", "waveband", "release", "refresh", "cite", "acknowledgement", "source", "notes",
-                "tables", "columns", "epoch", "bands", "drop", "coverage", "neighbourhood", "instrument",
+                "tables", "columns", "epoch", "bands", "drop", "coverage", "neighbourhood", "instrument", "state",
+                "mirror", "control",
             ),
         )  # fmt: skip
         catalog_id = self.text("", top, "id")
@@ -209,8 +134,19 @@ class _Reader:
         notes = top.get("notes", [])
         if not isinstance(notes, list) or not all(isinstance(item, str) for item in notes):
             raise self.fault("notes", notes, "a list of sentences is needed")
-        columns = self.section("columns", top.get("columns"), ("key", "ra", "dec", "source", "error", "motion"))
+        columns = self.section(
+            "columns",
+            top.get("columns"),
+            ("key", "ra", "dec", "source", "error", "motion", "units", "positions", "keep"),
+        )
         self.need_source("columns", columns)
+        if columns.get("positions", "decimal") not in POSITIONS:
+            raise self.fault("columns.positions", columns["positions"], f"one of {', '.join(POSITIONS)} is needed")
+        mirror = self.section("mirror", top.get("mirror", {}), ("rows_at_least", "source"))
+        if "mirror" in top:
+            self.need_source("mirror", mirror)
+        if "state" in top and top["state"] != NEEDS_CHECK:
+            raise self.fault("state", top["state"], f"the only state is {NEEDS_CHECK!r}; leave it out otherwise")
         neighbourhood = self.section(
             "neighbourhood", top.get("neighbourhood"), ("radius_arcsec", "row_limit", "source")
         )
@@ -236,7 +172,7 @@ class _Reader:
             cite=tuple(cite),
             acknowledgement=self.text("", top, "acknowledgement"),
             tables=tables,
-            key=self.text("columns", columns, "key"),
+            key=self.maybe_text("columns", columns, "key"),
             ra=self.text("columns", columns, "ra"),
             dec=self.text("columns", columns, "dec"),
             error=self.error(columns.get("error")),
@@ -245,6 +181,13 @@ class _Reader:
             bands=bands,
             drop=tuple(self.drop(i, item) for i, item in enumerate(self.list_of("drop"))),
             coverage=self.region("coverage", top.get("coverage")),
+            log=self.log(top.get("coverage")),
+            state=str(top.get("state", "")),
+            rows_at_least=int(self.number("mirror", mirror, "rows_at_least", low=1)) if "mirror" in top else None,
+            sexagesimal=columns.get("positions") == "sexagesimal",
+            units=self.words("columns", columns, "units"),
+            keep=self.texts("columns", columns, "keep"),
+            control=self.control(top["control"]) if "control" in top else None,
             neighbourhood_arcsec=self.number(
                 "neighbourhood", neighbourhood, "radius_arcsec", low=1.0, high=5.0 * 3600.0
             ),
@@ -266,7 +209,9 @@ class _Reader:
 
     def table(self, number: int, content: object) -> Table:
         where = f"tables[{number}]"
-        table = self.section(where, content, ("name", "protocol", "address", "table", "holds", "source"))
+        table = self.section(
+            where, content, ("name", "protocol", "address", "table", "geometry", "mode", "format", "holds", "source")
+        )
         address = self.text(where, table, "address")
         if not address.startswith(("https://", "http://")):
             raise self.fault(f"{where}.address", address, "an address that starts with https:// is needed")
@@ -275,13 +220,18 @@ class _Reader:
             name=self.text(where, table, "name"),
             protocol=protocol,
             address=address,
-            remote_table=self.text(where, table, "table") if protocol == "vizier" else str(table.get("table", "")),
+            remote_table=self.text(where, table, "table") if protocol in NEED_TABLE else str(table.get("table", "")),
+            geometry=self.choice(where, {"geometry": "circle", **table}, "geometry", GEOMETRIES),
+            mode=self.choice(where, {"mode": "sync", **table}, "mode", MODES),
+            format=self.choice(where, {"format": "votable", **table}, "format", FORMATS),
             holds=self.region(f"{where}.holds", table["holds"]) if "holds" in table else None,
             source=self.need_source(where, table),
         )
 
     def region(self, where: str, content: object) -> Region:
-        region = self.section(where, content, ("kind", "dec_deg", "l_deg", "b_deg", "outside", "source"))
+        region = self.section(
+            where, content, ("kind", "dec_deg", "l_deg", "b_deg", "outside", "moc", "log", "also", "source")
+        )
         outside = region.get("outside", False)
         if not isinstance(outside, bool):
             raise self.fault(f"{where}.outside", outside, "true or false is needed")
@@ -292,6 +242,65 @@ class _Reader:
             b_deg=self.pair(where, region, "b_deg", -90.0, 90.0),
             outside=outside,
             source=self.need_source(where, region),
+            moc=self.moc(where, region),
+            also=tuple(self.region(f"{where}.also[{i}]", part) for i, part in enumerate(region.get("also", []))),
+        )
+
+    def moc(self, where: str, region: dict[str, Any]) -> str:
+        """Address of the published footprint."""
+        if (region.get("kind") == "footprint") != ("moc" in region):
+            raise self.fault(
+                f"{where}.moc", region.get("moc"), "a footprint needs the address of its MOC; others have none"
+            )
+        if "moc" not in region:
+            return ""
+        address = self.text(where, region, "moc")
+        if ROWS_MOC in address:
+            raise self.fault(
+                f"{where}.moc",
+                address,
+                "a MOC made of a table's rows says where objects are, not where the telescope looked: give an image footprint",
+            )
+        return address
+
+    def log(self, content: object) -> PointingLog | None:
+        where = "coverage.log"
+        coverage = content if isinstance(content, dict) else {}
+        if (coverage.get("kind") == "pointed") != ("log" in coverage):
+            raise self.fault(where, coverage.get("log"), "pointed coverage needs its observation log; others have none")
+        if "log" not in coverage:
+            return None
+        log = self.section(
+            where, coverage["log"],
+            ("protocol", "address", "table", "geometry", "mode", "key", "ra", "dec", "exposure", "start", "instrument",
+             "field_radius_arcmin", "reference_s", "vignetting_at_edge", "units", "source"),
+        )  # fmt: skip
+        table: dict[str, Any] = {
+            key: log[key] for key in ("protocol", "address", "table", "geometry", "mode", "source") if key in log
+        }
+        return PointingLog(
+            table=self.table(0, {"name": LOG_TABLE} | table),
+            key=self.text(where, log, "key"),
+            ra=self.text(where, log, "ra"),
+            dec=self.text(where, log, "dec"),
+            exposure=self.text(where, log, "exposure"),
+            start=self.maybe_text(where, log, "start"),
+            instrument=self.maybe_text(where, log, "instrument"),
+            field_radius_arcmin=self.number(where, log, "field_radius_arcmin", low=0.1, high=300.0),
+            reference_s=self.number(where, log, "reference_s", low=1.0),
+            vignetting_at_edge=self.number(where, log, "vignetting_at_edge", low=0.01, high=1.0),
+            units=self.words(where, log, "units"),
+            source=self.need_source(where, log),
+        )
+
+    def control(self, content: object) -> Control:
+        where = "control"
+        control = self.section(where, content, ("ra_deg", "dec_deg", "radius_arcsec", "source"))
+        return Control(
+            ra_deg=self.number(where, control, "ra_deg", low=0.0, high=360.0),
+            dec_deg=self.number(where, control, "dec_deg", low=-90.0, high=90.0),
+            radius_arcsec=self.number(where, control, "radius_arcsec", low=1.0, high=5.0 * 3600.0),
+            source=self.need_source(where, control),
         )
 
     def error(self, content: object) -> ErrorColumns:
@@ -311,8 +320,10 @@ class _Reader:
             ErrorMeaning.NONE: (),
         }[meaning]
         level = self.maybe_number(where, error, "level", 0.0, 1.0)
-        if (meaning is ErrorMeaning.RADIUS) != (level is not None):
-            raise self.fault(f"{where}.level", level, "a radius needs the fraction it holds (0 to 1); others have none")
+        if meaning is ErrorMeaning.RADIUS and level is None:
+            raise self.fault(f"{where}.level", level, "a radius needs the fraction it holds (0 to 1)")
+        if meaning not in (ErrorMeaning.RADIUS, ErrorMeaning.ELLIPSE) and level is not None:
+            raise self.fault(f"{where}.level", level, "only a radius or an ellipse has a fraction that it holds")
         floor = self.number(where, error, "floor_arcsec", low=0.0, default=0.0)
         if meaning is ErrorMeaning.NONE and floor == 0.0:
             raise self.fault(
@@ -411,7 +422,7 @@ class _Reader:
                 flux_scale_error=self.number(where, band, "flux_scale_error", low=0.0, high=1.0, default=0.0),
                 source=source,
             ),
-            value=self.text(where, band, "value"),
+            value=self.maybe_text(where, band, "value"),
             error=self.maybe_text(where, band, "error"),
             limit_flag=self.limit_flag(f"{where}.limit_flag", band["limit_flag"]) if "limit_flag" in band else None,
             **dict(zip(("low", "high"), self.plausible(where, band), strict=True)),

@@ -2,11 +2,21 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
 from enum import StrEnum
 
 from xmatch.limits.coverage import Region
-from xmatch.records import Band, Question, WantedColumn, Waveband
+from xmatch.records import WHOLE_SKY_ARCSEC, Band, Question, WantedColumn, Waveband
+
+LOG_TABLE = "observation log"
+"""Name of the table that holds a mission's pointings, in every catalog that has one."""
+BY_UCD = "ucd:"
+"""Begins the stand-in for a column whose name is not confirmed: what follows is its UCD (IVOA)."""
+LONGEST_LIST = 100_000
+"""A list with more rows is asked by cone, not kept whole (our choice)."""
+LONGEST_EXPOSURE_S = 1.0e7
+"""No single pointing is longer (our choice: four months)."""
 
 
 class ErrorMeaning(StrEnum):
@@ -40,7 +50,7 @@ class ErrorColumns:
     columns: tuple[str, ...]
     correlation: str | None
     level: float | None
-    """Containment of a radius."""
+    """Fraction that a radius or an ellipse holds; None for an ellipse of one sigma."""
     floor_arcsec: float
     """Systematic one-sigma error per axis, added in quadrature."""
     source: str
@@ -83,7 +93,8 @@ class BandColumns:
     """Where one band's numbers stand in the table."""
 
     band: Band
-    value: str
+    value: str | None
+    """None where no column is known: the depth still gives a limit, but a row has no flux."""
     error: str | None
     limit_flag: LimitFlag | None
     low: float | None
@@ -110,6 +121,42 @@ class Table:
     remote_table: str
     holds: Region | None
     source: str
+    geometry: str = "circle"
+    """``circle`` where a TAP service knows ADQL geometry, ``box`` where plain comparisons must do."""
+    mode: str = "sync"
+    """``sync`` or ``async``, for TAP."""
+    format: str = "votable"
+    """``csv``, ``fits``, ``votable`` or ``ecsv``, for a file."""
+
+
+@dataclass(frozen=True)
+class PointingLog:
+    """The observation log of a mission that points: where it looked, how long, and how far its field reaches."""
+
+    table: Table
+    key: str
+    ra: str
+    dec: str
+    exposure: str
+    start: str | None
+    instrument: str | None
+    field_radius_arcmin: float
+    reference_s: float
+    """Exposure on the axis for which the depths of the bands stand."""
+    vignetting_at_edge: float
+    """Part of the effective area that is left at the edge of the field."""
+    units: Mapping[str, str]
+    source: str
+
+
+@dataclass(frozen=True)
+class Control:
+    """A cone that is known to hold rows."""
+
+    ra_deg: float
+    dec_deg: float
+    radius_arcsec: float
+    source: str
 
 
 @dataclass(frozen=True)
@@ -124,7 +171,8 @@ class Catalog:
     cite: tuple[str, ...]
     acknowledgement: str
     tables: tuple[Table, ...]
-    key: str
+    key: str | None
+    """Column with the object's name; None where the list has none, and the position stands for it."""
     ra: str
     dec: str
     error: ErrorColumns
@@ -144,11 +192,39 @@ class Catalog:
     fingerprint: str
     """SHA-256 of the file's bytes."""
     path: str
+    log: PointingLog | None = None
+    """Observation log, for pointed coverage."""
+    state: str = ""
+    """``needs check`` where the file's author could not confirm the columns."""
+    rows_at_least: int | None = None
+    """For a small list that is fetched whole and searched in the store: rows that it is known to hold."""
+    sexagesimal: bool = False
+    """Whether the position columns are text, hours and degrees."""
+    units: Mapping[str, str] = field(default_factory=dict)
+    """Units of columns that the service serves without one (CSV files, old tables)."""
+    control: Control | None = None
+    keep: tuple[str, ...] = ()
+    """Further columns that are kept with each row where the archive has them."""
 
     @property
     def band_list(self) -> tuple[Band, ...]:
         """The bands in file order."""
         return tuple(columns.band for columns in self.bands)
+
+    @property
+    def unresolved(self) -> tuple[str, ...]:
+        """Columns whose name is not known yet, only their UCD: a check finds out."""
+        return tuple(column.name for column in self.wanted_columns() if column.name.startswith(BY_UCD))
+
+    @property
+    def needs_check(self) -> bool:
+        """Whether nobody has confirmed its columns: it is asked only after a successful check."""
+        return bool(self.state) or bool(self.unresolved)
+
+    @property
+    def is_mirrored(self) -> bool:
+        """Whether it is fetched whole and searched in the store."""
+        return self.rows_at_least is not None
 
     @property
     def is_object_list(self) -> bool:
@@ -169,8 +245,12 @@ class Catalog:
                 wanted[name] = WantedColumn(name, **facts)  # type: ignore[arg-type]
 
         want(self.key)
-        want(self.ra, unit="deg", low=0.0, high=360.0)
-        want(self.dec, unit="deg", low=-90.0, high=90.0)
+        if self.sexagesimal:
+            want(self.ra)
+            want(self.dec)
+        else:
+            want(self.ra, unit="deg", low=0.0, high=360.0)
+            want(self.dec, unit="deg", low=-90.0, high=90.0)
         for name in self.error.columns:
             want(name)
         want(self.error.correlation)
@@ -185,6 +265,8 @@ class Catalog:
                 want(columns.limit_flag.column)
         for rule in self.drop:
             want(rule.column)
+        for extra in self.keep:
+            want(extra, required=False)
         return tuple(wanted.values())
 
     def question(self, table: Table, ra_deg: float, dec_deg: float, radius_arcsec: float) -> Question:
@@ -201,4 +283,41 @@ class Catalog:
             radius_arcsec=radius_arcsec,
             columns=self.wanted_columns(),
             row_limit=self.row_limit,
+            geometry=table.geometry,
+            mode=table.mode,
+            format=table.format,
+            units=self.units,
+        )
+
+    def whole_question(self, table: Table) -> Question:
+        """Return the question for every row of a list."""
+        whole = self.question(table, 0.0, 0.0, WHOLE_SKY_ARCSEC)
+        return replace(whole, row_limit=LONGEST_LIST, rows_at_least=self.rows_at_least or 0)
+
+    def log_question(self, ra_deg: float, dec_deg: float, radius_arcsec: float) -> Question:
+        """Return the cone to put to the observation log: every pointing whose field may reach the position."""
+        log = self.log
+        assert log is not None
+        columns = [
+            WantedColumn(log.key),
+            WantedColumn(log.ra, unit="deg", low=0.0, high=360.0),
+            WantedColumn(log.dec, unit="deg", low=-90.0, high=90.0),
+            WantedColumn(log.exposure, unit="s", low=0.0, high=LONGEST_EXPOSURE_S),
+            *[WantedColumn(name) for name in (log.start, log.instrument) if name is not None],
+        ]
+        return Question(
+            catalog_id=self.id,
+            release=self.release,
+            table=LOG_TABLE,
+            protocol=log.table.protocol,
+            address=log.table.address,
+            remote_table=log.table.remote_table,
+            ra_deg=ra_deg,
+            dec_deg=dec_deg,
+            radius_arcsec=radius_arcsec + 60.0 * log.field_radius_arcmin,
+            columns=tuple(columns),
+            row_limit=self.row_limit,
+            geometry=log.table.geometry,
+            mode=log.table.mode,
+            units=log.units,
         )

@@ -22,7 +22,9 @@ COMMANDS = {
     "demo": ("xmatch.cli.demo", "The main job on an invented sky: embedded archive, own store, no network."),
     "catalogs": ("xmatch.cli.catalogs", "The registry: which catalogs are asked, and what is known of each."),
     "target": ("xmatch.cli.target", "Write a commented target file, or check one."),
-    "store": ("xmatch.cli.store", "Where the store is and what it holds."),
+    "store": ("xmatch.cli.store", "Where the store is and what it holds; upgrade, back up, check."),
+    "browse": ("xmatch.cli.browse", "The store in a browser: read-only, on this machine only."),
+    "sql": ("xmatch.cli.sql", "Questions of your own to the store in SQL, and ready-made ones."),
 }
 
 
@@ -65,7 +67,9 @@ def main(args: Sequence[str] | None = None) -> None:
     # a short-lived process that imports some hundred modules spends a tenth of a warm answer looking for garbage
     gc.set_threshold(GC_OBJECTS)
     try:
-        group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
+        code = group.main(args=None if args is None else list(args), prog_name="blankfield", standalone_mode=False)
+        if isinstance(code, int) and code:
+            sys.exit(code)  # a command that said so by ctx.exit
     except click.exceptions.Exit as stop:
         sys.exit(stop.exit_code)
     except click.ClickException as fault:

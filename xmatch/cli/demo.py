@@ -56,6 +56,7 @@ def command(
         if write_target is not None:
             write_target.mkdir(parents=True, exist_ok=True)
             shutil.copy(fixture_path(TARGET_FILE), write_target)
+        check_unconfirmed(store, archive.address)
         answer = run_look(demo_target(), quiet=quiet or as_json, store=store, archives=archive.address)
         assert answer is not None
         print_answer(answer, width, as_json)
@@ -63,6 +64,20 @@ def command(
         click.echo(
             "Everything above is invented: the array, the source and its sky. Your own target: blankfield target > mine.toml"
         )
+
+
+def check_unconfirmed(store: str, address: str) -> None:
+    """Do what a user does once: have the columns that nobody has confirmed found at the archive."""
+    from xmatch.archives.transport import Transport
+    from xmatch.catalogs import load_catalogs
+    from xmatch.inspection import check_catalogs
+    from xmatch.store.store import open_store
+
+    waiting = [catalog for catalog in load_catalogs().values() if catalog.needs_check]
+    with open_store(store) as opened:
+        known = opened.latest_checks()
+        due = [catalog for catalog in waiting if catalog.id not in known]
+        check_catalogs(due, store=opened, transport=Transport(addresses=address))
 
 
 def cause_trouble(archive: object, one: str) -> None:

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from xmatch.cli.options import catalog_folder_option, store_option, width_option
+from xmatch.cli.options import catalog_folder_option, contact_option, store_option, width_option
 
 if TYPE_CHECKING:
     from xmatch.records import Target
@@ -47,13 +47,7 @@ def target_options(function: Any) -> Any:
 )
 @click.option("--only", multiple=True, metavar="CATALOG", help="Ask this catalog only; may be given several times.")
 @catalog_folder_option
-@click.option(
-    "--contact",
-    envvar="BLANKFIELD_CONTACT",
-    show_envvar=True,
-    metavar="EMAIL",
-    help="Your address, sent to archives so that they can reach you.",
-)
+@contact_option
 @click.option("--show-requests", is_flag=True, help="Print exactly what would be asked, and ask nothing.")
 @click.option("--json", "as_json", is_flag=True, help="Print the whole answer as JSON.")
 @click.option("--quiet", is_flag=True, help="No progress on standard error.")

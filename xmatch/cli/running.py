@@ -48,16 +48,16 @@ def run_look(
     chosen = {name: catalog for name, catalog in registry.items() if not only or name in only}
     options = LookOptions(offline=offline, again=again, age_limit_days=age_limit_days, partial=bool(only))
     with open_store(store) as opened:
-        if show_requests:
-            for text in requests_of(target, store=opened, catalogs=chosen, options=options):
-                click.echo(text)
-                click.echo()
-            return None
         transport = None
-        if not offline:
+        if show_requests or not offline:
             from xmatch.archives.transport import Transport
 
             transport = Transport(contact=contact, addresses=archives)
+        if show_requests and transport is not None:
+            for text in requests_of(target, store=opened, catalogs=chosen, transport=transport, options=options):
+                click.echo(text)
+                click.echo()
+            return None
         with progress_on(quiet) as progress:
             return look(target, store=opened, catalogs=chosen, transport=transport, options=options, progress=progress)
 

@@ -35,6 +35,11 @@ KINDS = {
     "entity bomb": "declares XML entities that grow",
     "moved": "redirects to another address",
     "missing cells": "leaves the last cell off every row",
+    "cut list": "sends the first rows of a plain list as if they were all",
+    "refuses format": "wants its format named",
+    "job error": "a job ends in an error",
+    "job aborted": "a job is ended by the archive",
+    "job stuck": "a job never ends",
     "unknown element": "puts the rows into an element of its own making",
 }
 
@@ -170,6 +175,7 @@ _CHANGES: dict[str, Callable[[bytes, Fault], bytes]] = {
     "cut notice": _cut_notice,
     "html": lambda body, fault: HTML_PAGE,
     "bad gateway": lambda body, fault: HTML_PAGE,
+    "cut list": lambda body, fault: b"".join(body.splitlines(keepends=True)[: max(1, fault.size)]),
     "cut file": lambda body, fault: body[: int(len(body) * fault.fraction)],
     "empty body": lambda body, fault: b"",
     "unavailable": lambda body, fault: b"down for maintenance\n",

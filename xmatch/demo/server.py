@@ -10,7 +10,7 @@ import io
 import re
 import socket
 import threading
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from http import HTTPStatus
 from http.server import BaseHTTPRequestHandler, ThreadingHTTPServer
@@ -20,7 +20,9 @@ from urllib.parse import parse_qs, unquote, urlsplit
 
 import numpy as np
 
+from xmatch.demo import services
 from xmatch.demo.faults import HTTP_STATUS, Fault, spoil
+from xmatch.demo.services import file_answer
 from xmatch.demo.tables import (
     DemoColumn,
     DemoTable,
@@ -67,7 +69,9 @@ class EmbeddedArchive:
     ----------
     tables : sequence of DemoTable
         What it serves: by the VizieR request form under ``remote_table``, and by cone search under
-        ``cone_path``.
+        ``cone_path``, by TAP and as files likewise.
+    documents : mapping of str to bytes, optional
+        Files that are served as they are, by ``host/path?query``; their faults are those of ``documents``.
 
     Attributes
     ----------
@@ -77,11 +81,13 @@ class EmbeddedArchive:
         Everything that was asked, in the order of arrival.
     """
 
-    def __init__(self, tables: Sequence[DemoTable]) -> None:
+    def __init__(self, tables: Sequence[DemoTable], documents: Mapping[str, bytes] | None = None) -> None:
         self.tables = tuple(tables)
+        self.documents = dict(documents or {})
         self.requests: list[Logged] = []
         self.address = ""
         self.closing = threading.Event()
+        self.jobs = services.Jobs()
         self._lock = threading.Lock()
         self._planned: list[_Planned] = []
         self._server: _Server | None = None
@@ -131,10 +137,19 @@ class EmbeddedArchive:
                 due.append(planned.fault)
         return due
 
+    def planned_for(self, remote_table: str) -> list[Fault]:
+        """The faults due at a table, without counting them as committed."""
+        with self._lock:
+            return [p.fault for p in self._planned if p.remote_table in ("*", remote_table) and p.left != 0]
+
     def log(self, request: Logged) -> None:
         """Note a request."""
         with self._lock:
             self.requests.append(request)
+
+
+_Served = tuple[bytes, list[Fault], str, int, dict[str, str]]
+"""Body, faults to commit, content type, HTTP status and headers."""
 
 
 class _Server(ThreadingHTTPServer):
@@ -194,20 +209,11 @@ class _Handler(BaseHTTPRequestHandler):
         host, _, path = unquote(parts.path).lstrip("/").partition("/")
         path = "/" + path
         tables = [table for table in archive.tables if table.host == host]
-        at_cone = [table for table in tables if table.cone_path and table.cone_path == path]
-        if self.command == "POST" and path == VIZIER_PATH and tables:
-            form = VizierForm.of(body)
-            named = form.tables(tables)
-            faults = self.faults([table.remote_table for table in named] or [""])
-            reply = form.answer([_altered(table, faults) for table in named])
-        elif self.command == "GET" and at_cone:
-            faults = self.faults([at_cone[0].remote_table])
-            reply = cone_answer(_altered(at_cone[0], faults), parse_qs(parts.query))
-        else:
+        served = self.served(path, parts.query, body, tables)
+        if served is None:
             self.send(404, b"no such service\n", "text/plain", {}, [])
             return
-        headers: dict[str, str] = {}
-        status, content_type = 200, VOTABLE_TYPE
+        reply, faults, content_type, status, headers = served
         for fault in faults:
             reply = spoil(reply, fault)
             status = HTTP_STATUS.get(fault.kind, status)
@@ -219,13 +225,89 @@ class _Handler(BaseHTTPRequestHandler):
                 headers["Location"] = fault.to
         self.send(status, reply, content_type, headers, faults)
 
+    def served(self, path: str, query: str, body: str, tables: list[DemoTable]) -> _Served | None:
+        """What the service at this path says, before it is spoilt; None where there is no service."""
+        plain: tuple[int, dict[str, str]] = (200, {})
+        document = self.server.archive.documents.get(unquote(self.path).lstrip("/"))
+        if document is not None:
+            return document, self.faults(["documents"]), "application/octet-stream", *plain
+        if self.command == "POST" and path == VIZIER_PATH and tables:
+            form = VizierForm.of(body)
+            named = form.tables(tables)
+            faults = self.faults([table.remote_table for table in named] or [""])
+            return form.answer([_altered(table, faults) for table in named]), faults, VOTABLE_TYPE, *plain
+        for table in tables:
+            if self.command == "GET" and table.cone_path and table.cone_path == path:
+                faults = self.faults([table.remote_table])
+                return cone_answer(_altered(table, faults), parse_qs(query)), faults, VOTABLE_TYPE, *plain
+            if self.command == "GET" and table.file_path and table.file_path == path:
+                faults = self.faults([table.remote_table])
+                whole, content_type = file_answer(_altered(table, faults))
+                return whole, faults, content_type, *plain
+        at_tap = [table for table in tables if table.tap_path and path.startswith(f"{table.tap_path}/")]
+        if at_tap:
+            return self.tap(path.removeprefix(f"{at_tap[0].tap_path}/"), services.form_of(body), at_tap)
+        return None
+
+    def tap(self, step: str, form: dict[str, list[str]], tables: list[DemoTable]) -> _Served | None:
+        """One step of TAP: a query at once, or the life of a job."""
+        jobs = self.server.archive.jobs
+        text = form.get("QUERY", [""])[-1]
+        _, _, name = step.partition("async/")
+        name, _, rest = name.partition("/")
+        job = jobs.get(name)
+        if job is not None:
+            text = job.query
+        about = [t for t in tables if re.search(rf"{re.escape(t.tap_table)}\W|{re.escape(t.tap_table)}$", text)]
+        due = (
+            self.faults([t.remote_table for t in about[:1]] or [""])
+            if step == "sync" or rest == "results/result"
+            else []
+        )
+        if step == "sync":
+            if any(f.kind == "refuses format" for f in due) and "RESPONSEFORMAT" not in form:
+                return services.tap_error("FORMAT not accepted: name one"), [], VOTABLE_TYPE, 400, {}
+            return services.tap_answer([_altered(t, due) for t in tables], form), due, VOTABLE_TYPE, 200, {}
+        if step == "async" and self.command == "POST":
+            made = jobs.make(text)
+            return b"", [], "text/plain", 303, {"Location": f"{self.own_address()}/{made}"}
+        if job is None:
+            return None
+        stuck = {f.kind for f in self.server.archive.planned_for(about[0].remote_table if about else "")}
+        if self.command == "POST":
+            job.started = job.started or form.get("PHASE") == ["RUN"]
+            if form.get("ACTION") == ["DELETE"]:
+                jobs.delete(name)
+            return b"", [], "text/plain", 303, {"Location": self.own_address()}
+        if rest == "phase":
+            job.looks += 1
+            phase = (
+                "PENDING" if not job.started else "EXECUTING" if job.looks < 2 or "job stuck" in stuck else "COMPLETED"
+            )
+            phase = {"job error": "ERROR", "job aborted": "ABORTED"}.get(
+                next(iter(stuck & {"job error", "job aborted"}), ""), phase
+            )
+            return phase.encode(), [], "text/plain", 200, {}
+        if rest == "error":
+            return b"<p>column RAXX does not exist</p>", [], "text/html", 200, {}
+        if rest == "results/result":
+            query = {"QUERY": [text]}
+            return services.tap_answer([_altered(t, due) for t in tables], query), due, VOTABLE_TYPE, 200, {}
+        return None
+
+    def own_address(self) -> str:
+        """The address asked, as the archive that it stands for would write it."""
+        return "https://" + unquote(urlsplit(self.path).path).lstrip("/")
+
     def faults(self, remote_tables: list[str]) -> list[Fault]:
         return [fault for name in remote_tables for fault in self.server.archive.faults_for(name)]
 
     def send(self, status: int, body: bytes, content_type: str, headers: dict[str, str], faults: list[Fault]) -> None:
         closing = self.server.archive.closing
         kinds = {fault.kind: fault for fault in faults}
-        if "delay" in kinds and closing.wait(kinds["delay"].seconds):
+        # tables of one request are worked off one after the other
+        delay_s = sum(fault.seconds for fault in faults if fault.kind == "delay")
+        if delay_s and closing.wait(delay_s):
             self.close_connection = True
             return
         if "closed" in kinds:

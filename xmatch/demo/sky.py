@@ -15,6 +15,9 @@ from typing import Any
 
 import numpy as np
 
+from xmatch.catalogs import load_catalogs
+from xmatch.catalogs.model import Catalog
+from xmatch.demo.generic import Generic
 from xmatch.records import Floats, Outcome
 
 RA_DEG = 264.50625
@@ -22,16 +25,59 @@ DEC_DEG = -33.81583
 """Where the invented transient is: 17:38:01.5 -33:48:57, l = 355.0, b = -1.2 deg."""
 
 BUILT_TO_SHOW = {
+    "fermi-4fgl-dr4": Outcome.BLANK,
+    "hess-hgps": Outcome.BLANK,  # without a depth in its file, so without a limit
+    "swift-bat-157m": Outcome.BLANK,
+    "integral-ibis-gps9": Outcome.BLANK,
+    "xmm-5xmm-dr15": Outcome.BLANK,  # one pointing holds it, 6 arcmin off axis
+    "xmm-4xmm-dr13": Outcome.BLANK,
+    "chandra-csc21": Outcome.NOT_COVERED,  # the nearest pointing is 27 arcmin away
     "erass1-main": Outcome.CHANCE,  # one source of a dense invented cluster, 23 arcsec off
+    "rosat-2rxs": Outcome.BLANK,
+    "swift-2sxps": Outcome.BLANK,  # one short pointing holds it
+    "galex-guvcat-ais": Outcome.COVERAGE_UNKNOWN,  # its footprint was not fetched, and it holds nothing here
+    "xmm-om-suss6": Outcome.BLANK,
     "gaia-dr3": Outcome.CHANCE,  # one faint star inside the error region of a crowded field
     "ps1-dr1": Outcome.NOT_COVERED,  # the survey ends at Dec -30
+    "skymapper-dr4": Outcome.HIDDEN,  # the bright star, in coarse images
+    "decaps2": Outcome.CHANCE,  # the same faint star
+    "vphas-dr2": Outcome.CHANCE,  # the same faint star
+    "igaps-dr1": Outcome.NOT_COVERED,
     "2mass-psc": Outcome.BLANK,
+    "vvv-virac2": Outcome.CHANCE,  # the same faint star
+    "ukidss-gps": Outcome.NOT_COVERED,
+    "allwise": Outcome.HIDDEN,  # a bright star 11 arcsec away
     "catwise2020": Outcome.HIDDEN,  # a bright star 11 arcsec away
-    "nvss": Outcome.BLANK,
+    "glimpse": Outcome.NOT_COVERED,  # stops at b = -1 deg
     "racs-low": Outcome.BLANK,
+    "racs-mid": Outcome.BLANK,
+    "racs-high": Outcome.BLANK,
     "vlass-ql1": Outcome.BLANK,
-    "atnf-psr": Outcome.COVERAGE_UNKNOWN,  # a list; its nearest pulsar is a degree away
+    "nvss": Outcome.BLANK,
+    "sumss": Outcome.NOT_COVERED,  # leaves out the plane
+    "mgps2": Outcome.BLANK,
+    "tgss-adr1": Outcome.BLANK,
+    "gleam-gal": Outcome.BLANK,
+    "gleam-x-dr2": Outcome.COVERAGE_UNKNOWN,  # no map of its area, and it holds nothing here
+    "lotss-dr3": Outcome.NOT_COVERED,
+    "vlssr": Outcome.NOT_COVERED,
+    "cornish": Outcome.NOT_COVERED,
+    "thor-continuum": Outcome.NOT_COVERED,
+    "glostar": Outcome.NOT_COVERED,
+    "smgps-compact": Outcome.BLANK,
+    # lists prove nothing
+    "atnf-psr": Outcome.COVERAGE_UNKNOWN,
+    "mcgill-magnetars": Outcome.COVERAGE_UNKNOWN,
+    "lpt-cat": Outcome.COVERAGE_UNKNOWN,
+    "green-snr": Outcome.COVERAGE_UNKNOWN,
+    "aavso-vsx": Outcome.COVERAGE_UNKNOWN,
+    "polar-cat": Outcome.COVERAGE_UNKNOWN,
+    "gaia-edr3-wd": Outcome.COVERAGE_UNKNOWN,
+    "ultracool-sheet": Outcome.COVERAGE_UNKNOWN,
+    "simbad-basic": Outcome.COVERAGE_UNKNOWN,
 }
+PLAUSIBLE = {"e_R": 0.05, "e_D": 0.05, "obj": 1, "Epo": 56_000.0}
+"""For a row of an otherwise empty table, by the first letters of the column; magnitudes get 18."""
 SEED = 20261201
 ARCSEC = 1.0 / 3600.0
 VIZIER = "vizier.cds.unistra.fr"
@@ -247,19 +293,56 @@ class Sky:
         )  # fmt: skip
 
     def tables(self) -> list[Any]:
-        """Every table of the invented sky."""
+        """Every table of the invented sky: those with a story, then those made from their catalog files."""
         stars = self.stars()
-        return [
+        told = [
             self.gaia(stars), self.empty_ps1(), self.twomass(stars), self.catwise(stars), self.erass(),
             self.nvss(), self.racs(), self.vlass(), self.pulsars(),
         ]  # fmt: skip
+        generic = Generic(self.rng, self.place, stars, table)
+        names = {made.meta["catalog"] for made in told}
+        registry = load_catalogs()
+        others = [made for name, catalog in registry.items() if name not in names for made in generic.tables(catalog)]
+        # further tables of the told ones, of other parts of the sky
+        served = {made.meta["remote_table"] for made in told}
+        others += [
+            generic.table(registry[name], i, elsewhere=True)
+            for name in sorted(names)
+            for i, one in enumerate(registry[name].tables)
+            if one.remote_table and one.remote_table not in served
+        ]
+        at_control = [self.at_control(registry[made.meta["catalog"]], made) for made in told]
+        # two catalogs may share one log
+        return list({made.meta["catalog"]: made for made in [*at_control, *others]}.values())
+
+    def at_control(self, catalog: Catalog, made: Any) -> Any:
+        """The table with a few more rows where a check looks for them; what they say does not matter."""
+        if catalog.rows_at_least is not None:
+            made.meta["filler_rows"] = catalog.rows_at_least
+        if catalog.control is None:
+            return made
+        from astropy.table import Table, vstack
+
+        control = catalog.control
+        few = Table(made[:0], copy=True)
+        for i in range(4):
+            offset = control.radius_arcsec * ARCSEC * 0.3 * (i - 1.5) / 2.0
+            row = {name: made[name][0] if len(made) else PLAUSIBLE.get(name[:3], 18.0) for name in made.colnames}
+            row[made.meta["ra"]], row[made.meta["dec"]] = control.ra_deg + offset, control.dec_deg + offset
+            few.add_row(row)
+        grown = vstack([made, few], metadata_conflicts="silent")
+        for name in made.colnames:
+            grown[name].meta.update(made[name].meta)
+            grown[name].info.format = made[name].info.format
+        return grown
 
 
 DIGITS = {"deg": "%.7f", "mas": "%.4f", "mas/yr": "%.3f", "mag": "%.4f", "arcsec": "%.3f", "mJy": "%.3f",
-          "mJy/beam": "%.3f", "arcsec/yr": "%.4f", "s": "%.3f", "mW/m2": "%.4e", "d": "%.3f"}  # fmt: skip
+          "mJy/beam": "%.3f", "arcsec/yr": "%.4f", "s": "%.3f", "mW/m2": "%.4e", "d": "%.3f", "Jy": "%.5g",
+          "Jy/beam": "%.5g", "erg s-1 cm-2": "%.4e"}  # fmt: skip
 
 
-def table(catalog_id: str, remote_table: str, ra: str, dec: str, **columns: tuple[Any, str | None]) -> Any:
+def table(catalog_id: str, remote_table: str, ra: str, dec: str, /, **columns: Any) -> Any:
     """An astropy table with what the embedded archive needs to serve it."""
     from astropy.table import Table
 
@@ -268,10 +351,12 @@ def table(catalog_id: str, remote_table: str, ra: str, dec: str, **columns: tupl
         "cone_path": f"/viz-bin/conesearch/{remote_table}", "ra": ra, "dec": dec,
         "description": "Invented rows for the demo: none of this is real.",
     })  # fmt: skip
-    for name, (values, unit) in columns.items():
+    for name, (values, unit, *ucd) in columns.items():
         made[name] = np.asarray(values)
         if unit is not None:
             made[name].meta["unit"] = unit
+        if ucd and ucd[0]:
+            made[name].meta["ucd"] = ucd[0]
         if unit in DIGITS and made[name].dtype.kind == "f":
             made[name].info.format = DIGITS[unit]
     return made

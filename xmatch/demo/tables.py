@@ -46,6 +46,14 @@ class DemoTable:
     cone_path: str = ""
     """Path of its cone search at that host; none when empty."""
     description: str = ""
+    tap_path: str = ""
+    """Path of the TAP service that has it; none when empty."""
+    tap_table: str = ""
+    """Its name there."""
+    file_path: str = ""
+    """Path at which the whole table is a file; none when empty."""
+    file_format: str = "csv"
+    """``csv``, ``fits``, ``votable`` or ``ecsv``."""
 
     @property
     def ra_deg(self) -> Floats:
@@ -61,8 +69,8 @@ class DemoTable:
 def load_table(path: Path | str) -> DemoTable:
     """Read a table from an ECSV file.
 
-    The file's metadata holds ``remote_table``, ``ra`` and ``dec``, and may hold ``host``, ``cone_path`` and
-    ``description``. A column's unit, or ``unit`` in its metadata where astropy would not parse it, is served as
+    The file's metadata holds ``remote_table``, ``ra`` and ``dec``, and may hold ``host``, ``cone_path``, ``tap_path`` with
+    ``tap_table``, ``file_path`` with ``file_format``, and ``description``. A column's unit, or ``unit`` in its metadata where astropy would not parse it, is served as
     written; ``ucd`` may stand there too. Columns that begin with an underscore are not served.
 
     Raises
@@ -85,16 +93,44 @@ def load_table(path: Path | str) -> DemoTable:
         datatype, arraysize = _type_of(np.asarray(column).dtype)
         unit = column.meta.get("unit") or (str(column.unit) if column.unit is not None else None)
         columns.append(DemoColumn(name, datatype, unit, column.meta.get("ucd", ""), arraysize))
+    rows = {name: np.ma.asarray(table[name]) for name in table.colnames}
     return DemoTable(
         remote_table=meta["remote_table"],
         columns=tuple(columns),
-        rows={name: np.ma.asarray(table[name]) for name in table.colnames},
+        rows=_filled(rows, meta, int(meta.get("filler_rows", 0)) - len(table)),
         ra_column=meta["ra"],
         dec_column=meta["dec"],
         host=meta.get("host", VIZIER_HOST),
         cone_path=meta.get("cone_path", ""),
         description=meta.get("description", ""),
+        tap_path=meta.get("tap_path", ""),
+        tap_table=meta.get("tap_table", ""),
+        file_path=meta.get("file_path", ""),
+        file_format=meta.get("file_format", "csv"),
     )
+
+
+def _filled(rows: dict[str, Any], meta: Mapping[str, Any], n: int) -> dict[str, Any]:
+    """The rows, and as many more as a list must hold, all in the northern cap, where nothing of the demo is."""
+    if n <= 0:
+        return rows
+    rng = np.random.default_rng(n)
+    ra, dec = rng.uniform(0.0, 360.0, n), rng.uniform(70.0, 89.0, n)
+    filled: dict[str, Any] = {}
+    for name, values in rows.items():
+        if name in (meta["ra"], meta["dec"]):
+            more: Any = ra if name == meta["ra"] else dec
+        elif values.dtype.kind == "U":
+            numbered = np.char.add("filler ", np.arange(n).astype(str))
+            more = np.resize(np.ma.getdata(values), n) if " " in str(values[0]) else numbered
+        else:
+            more = np.resize(np.ma.getdata(values), n)
+        filled[name] = np.ma.concatenate([values, more])
+    for name in rows:
+        # a position in a column of its own follows the true one
+        if name in (meta.get("ra_served"), meta.get("dec_served")):
+            filled[name] = filled[meta["ra"] if name == meta["ra_served"] else meta["dec"]]
+    return filled
 
 
 def _type_of(dtype: np.dtype[Any]) -> tuple[str, str | None]:

@@ -14,7 +14,7 @@ AB_ZERO_JY = 10.0 ** (-0.4 * 48.60) / JY_CGS
 ST_ZERO_CGS_A = 10.0 ** (-0.4 * 21.10)
 """f_lambda of ST magnitude 0, erg s^-1 cm^-2 A^-1 (Koornneef et al. 1986, Highlights of Astronomy 7, 833)."""
 ANGSTROM_CM = 1.0e-8
-JY_PER_UNIT = {"Jy": 1.0, "mJy": 1.0e-3, "uJy": 1.0e-6, "mJy/beam": 1.0e-3}
+JY_PER_UNIT = {"Jy": 1.0, "mJy": 1.0e-3, "uJy": 1.0e-6, "Jy/beam": 1.0, "mJy/beam": 1.0e-3}
 """Units of flux-density columns. A peak per beam is the flux density of a point source, which is what is looked for."""
 MAG_PER_RELATIVE = 2.5 / np.log(10.0)
 """Magnitudes per relative flux error, 1.0857 (definition)."""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,6 +11,7 @@ from numpy.typing import ArrayLike
 
 from xmatch.match.ellipse import covariance
 from xmatch.match.motion import move
+from xmatch.match.separation import separation_arcsec
 from xmatch.records import Bools, Floats, Position
 
 # ICRS to Galactic: the IAU 1958 pole and node as fixed for ICRS in the Hipparcos and Tycho Catalogues,
@@ -21,6 +23,10 @@ ICRS_TO_GALACTIC = np.array(
         [-0.8676661490190047, -0.1980763734312015, +0.4559837761750669],
     ]
 )
+Contains = Callable[[Floats, Floats], Bools]
+NEED_MORE = frozenset({"footprint", "pointed", "unstated"})
+"""Kinds of coverage that the catalog file alone cannot decide."""
+SECTORS = 8
 RINGS, SPOKES = 24, 48
 """Equal-probability points that stand for the error region."""
 
@@ -32,7 +38,9 @@ class Region:
     Attributes
     ----------
     kind : str
-        ``all sky``, ``declination``, ``galactic box`` or ``compilation`` (whose absence proves nothing).
+        ``all sky``, ``declination``, ``galactic box``, ``footprint`` (a MOC that must be fetched first),
+        ``pointed`` (an observation log must be asked), ``unstated`` (no map of it is
+        published, only bounds) or ``compilation`` (whose absence proves nothing).
     dec_deg, l_deg, b_deg : tuple of float or None
         Inclusive bounds in degrees; an ``l`` interval may wrap through 0.
     """
@@ -43,9 +51,19 @@ class Region:
     b_deg: tuple[float, float] | None = None
     outside: bool = False
     source: str = ""
+    moc: str = ""
+    """Address of the footprint."""
+    also: tuple[Region, ...] = ()
+    """Further parts: a position inside any of them is inside."""
 
     def contains(self, ra_deg: ArrayLike, dec_deg: ArrayLike) -> Bools:
         """Whether positions (degrees) lie inside."""
+        inside = self._own(ra_deg, dec_deg)
+        for part in self.also:
+            inside |= part.contains(ra_deg, dec_deg)
+        return inside
+
+    def _own(self, ra_deg: ArrayLike, dec_deg: ArrayLike) -> Bools:
         dec = np.asarray(dec_deg, dtype=float)
         inside = np.ones(np.broadcast_shapes(np.shape(ra_deg), dec.shape), dtype=bool)
         if self.dec_deg is not None:
@@ -84,16 +102,73 @@ def error_points(position: Position, k: float) -> tuple[Floats, Floats]:
     return move(position.ra_deg, position.dec_deg, 1.0e3 * east, 1.0e3 * north, 1.0)
 
 
-def covered_fraction(position: Position, region: Region, k: float) -> float | None:
-    """Fraction of the k-sigma error region (by probability) inside the footprint; None for a compilation."""
+def covered_fraction(position: Position, region: Region, k: float, contains: Contains | None = None) -> float | None:
+    """Fraction of the error region, by probability, that the catalog looked at.
+
+    Parameters
+    ----------
+    position : Position
+        Centre and error ellipse.
+    region : Region
+        The coverage that the catalog file states.
+    k : float
+        Size of the error region in sigma.
+    contains : callable, optional
+        For a ``footprint`` or ``pointed`` coverage: takes right ascensions and declinations (degrees, arrays) and says
+        which are inside.
+
+    Returns
+    -------
+    float or None
+        From 0 to 1, by 1,152 points of equal probability; None where nothing says so: a compilation, a footprint that
+        was not fetched, an observation log without an answer. Bounds stated beside such a coverage still hold: outside
+        them it is 0.
+    """
     if region.kind == "compilation":
         return None
     ra, dec = error_points(position, k)
-    return float(np.mean(region.contains(ra, dec)))
+    inside = region.contains(ra, dec)
+    if region.kind in NEED_MORE and inside.any():
+        if contains is None:
+            return None
+        inside = inside & contains(ra, dec)
+    return float(np.mean(inside))
+
+
+def sides_with_rows(
+    position: Position, ra_deg: ArrayLike, dec_deg: ArrayLike, hole_arcsec: float, at_least: int
+) -> int:
+    """Of eight sectors around a position, how many hold enough rows: evidence that a catalog reaches here.
+
+    Parameters
+    ----------
+    position : Position
+        The centre.
+    ra_deg, dec_deg : array_like
+        Rows, ICRS degrees.
+    hole_arcsec : float
+        Rows nearer than this say nothing of the surroundings.
+    at_least : int
+        Rows that a sector must hold.
+
+    Returns
+    -------
+    int
+        0 to 8. All eight say that the edge of a survey does not run through here; for a sparse list they never fill.
+    """
+    ra, dec = np.asarray(ra_deg, dtype=float), np.asarray(dec_deg, dtype=float)
+    distance = separation_arcsec(position.ra_deg, position.dec_deg, ra, dec)
+    east = np.sin(np.radians(ra - position.ra_deg)) * np.cos(np.radians(dec))
+    north = np.sin(np.radians(dec - position.dec_deg))
+    sector = np.floor(np.degrees(np.arctan2(east, north)) % 360.0 / 360.0 * SECTORS).astype(int) % SECTORS
+    counts = np.bincount(sector[distance > hole_arcsec], minlength=SECTORS)
+    return int(np.count_nonzero(counts >= at_least))
 
 
 def touches(ra_deg: float, dec_deg: float, radius_arcsec: float, region: Region) -> bool:
     """Whether a cone may hold rows of the region; errs on the side of yes."""
+    if any(touches(ra_deg, dec_deg, radius_arcsec, part) for part in region.also):
+        return True
     r = radius_arcsec / 3600.0
     if region.dec_deg is not None and not region.dec_deg[0] - r <= dec_deg <= region.dec_deg[1] + r:
         return False

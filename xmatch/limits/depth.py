@@ -37,7 +37,9 @@ class _Depth:
     note: str
 
 
-def limit_for_band(band: Band, photometry: Photometry | None, *, assumptions: Assumptions) -> Limit | None:
+def limit_for_band(
+    band: Band, photometry: Photometry | None, *, assumptions: Assumptions, why_none: str = "no neighbours"
+) -> Limit | None:
     """Completeness limit of one band at the position, as observed, in the band's unit.
 
     Parameters
@@ -48,6 +50,8 @@ def limit_for_band(band: Band, photometry: Photometry | None, *, assumptions: As
         Neighbours in this band; ``nan`` and listed limits are left out.
     assumptions : Assumptions
         Confidence and how many neighbours a local depth needs.
+    why_none : str
+        Why there is no photometry, for the note.
 
     Returns
     -------
@@ -62,7 +66,7 @@ def limit_for_band(band: Band, photometry: Photometry | None, *, assumptions: As
     passed: list[str] = []
     chosen: _Depth | None = None
     if photometry is None:
-        passed.append("no neighbours")
+        passed.append(why_none)
     else:
         good = np.isfinite(photometry.value) & ~photometry.is_limit
         if band.quantity is not Quantity.MAGNITUDE:

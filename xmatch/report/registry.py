@@ -6,6 +6,7 @@ from collections.abc import Iterable, Sequence
 
 from xmatch.catalogs.model import Catalog
 from xmatch.constants import C_CM_S, KEV_HZ
+from xmatch.limits.coverage import Region
 from xmatch.records import Band
 
 
@@ -20,7 +21,9 @@ def list_lines(catalogs: Sequence[Catalog]) -> Iterable[str]:
             waveband = catalog.waveband
             yield str(waveband)
         depths = ", ".join(_depth(band) for band in catalog.band_list if band.depth is not None) or "no depth"
-        note = f"; {len(catalog.unverified)} facts unverified" if catalog.unverified else ""
+        n = len(catalog.unverified)
+        state = "; waits for a check" if catalog.needs_check else ""
+        note = f"{state}; {n} fact{'' if n == 1 else 's'} unverified" if catalog.unverified else state
         yield f"  {catalog.id:<{width}}  {catalog.release}; {depths}; {coverage_text(catalog)}{note}"
 
 
@@ -38,7 +41,7 @@ def show_lines(catalog: Catalog) -> Iterable[str]:
     if catalog.integration_s is not None:
         yield f"  integration     {catalog.integration_s:g} s [{catalog.resolution_source}]"
     error = catalog.error
-    meaning = str(error.meaning) if error.level is None else f"radius that holds {error.level:.0%}"
+    meaning = str(error.meaning) if error.level is None else f"{error.meaning} that holds {error.level:.0%}"
     listed = f" in {', '.join(error.columns)}" if error.columns else ""
     yield f"  position error  {meaning}{listed}, floor {error.floor_arcsec:g} arcsec [{error.source}]"
     if catalog.motion is not None:
@@ -48,13 +51,23 @@ def show_lines(catalog: Catalog) -> Iterable[str]:
         yield f"  table           {table.name}: {table.protocol} {table.address} {table.remote_table} [{table.source}]"
     for columns in catalog.bands:
         band = columns.band
-        yield f"  band            {band.name}: {edges_text(band)}; {band.quantity} in {columns.value} [{band.source}]"
+        yield f"  band            {band.name}: {edges_text(band)}; {band.quantity} in {columns.value or 'no known column'} [{band.source}]"
         if band.system is not None:
             yield f"                  {band.system} magnitudes, {band.zero_point_jy:g} Jy at zero"
         if band.depth is not None:
             yield f"                  depth {_depth(band)} [{band.depth_source}]"
     for rule in catalog.drop:
         yield f"  left out        {rule.column} >= {rule.at_least:g}: {rule.why} [{rule.source}]"
+    if catalog.log is not None:
+        log = catalog.log
+        yield f"  observations    {log.table.address} {log.table.remote_table}: {log.exposure} in a field of {log.field_radius_arcmin:g} arcmin [{log.source}]"
+    if catalog.rows_at_least is not None:
+        yield f"  kept whole      a list of at least {catalog.rows_at_least} rows"
+    if catalog.control is not None:
+        control = catalog.control
+        yield f"  control         {control.radius_arcsec:g} arcsec around {control.ra_deg:g} {control.dec_deg:+g} deg [{control.source}]"
+    if catalog.needs_check:
+        yield "  state           waits for a check: blankfield catalogs check"
     for note in catalog.notes:
         yield f"  note            {note}"
     for source in catalog.unverified:
@@ -93,6 +106,7 @@ def catalog_dict(catalog: Catalog) -> dict[str, object]:
             }
             for band in catalog.band_list
         ],
+        "needs_check": catalog.needs_check,
         "unverified": list(catalog.unverified),
         "fingerprint": catalog.fingerprint,
     }
@@ -101,13 +115,20 @@ def catalog_dict(catalog: Catalog) -> dict[str, object]:
 def coverage_text(catalog: Catalog) -> str:
     """The coverage in words."""
     region = catalog.coverage
+    if region.also:
+        own, *others = [_region_text(part) for part in (region, *region.also)]
+        return f"{own}; or {'; or '.join(others)}"
+    return _region_text(region)
+
+
+def _region_text(region: Region) -> str:
     parts = [region.kind]
     if region.dec_deg is not None:
         parts.append(f"Dec {region.dec_deg[0]:+g} to {region.dec_deg[1]:+g}")
     if region.l_deg is not None:
         parts.append(f"l {region.l_deg[0]:g} to {region.l_deg[1]:g}")
     if region.b_deg is not None and region.b_deg != (-90.0, 90.0):
-        parts.append(f"b {region.b_deg[0]:+g} to {region.b_deg[1]:+g}")
+        parts.append(f"{'outside ' if region.outside else ''}b {region.b_deg[0]:+g} to {region.b_deg[1]:+g}")
     return " ".join(parts)
 
 

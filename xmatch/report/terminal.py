@@ -77,11 +77,12 @@ def lines(look: Look, width: int) -> Iterator[tuple[str, str]]:
     yield from _position(look, width)
     yield from _section("What each catalog says", width)
     waveband = None
+    longest = max((len(finding.catalog_id) for finding in look.findings), default=0)
     for finding in look.findings:
         if finding.waveband is not waveband:
             waveband = finding.waveband
             yield f"{waveband}", "underline"
-        yield from _finding(look, finding, width)
+        yield from _finding(look, finding, width, longest)
     yield from _chance(look, width)
     yield from _limits(look, width)
     yield from _spin(look, width)
@@ -128,10 +129,10 @@ def _position(look: Look, width: int) -> Iterator[tuple[str, str]]:
         yield from _wrap(remark, width, "note    ")
 
 
-def _finding(look: Look, finding: Finding, width: int) -> Iterator[tuple[str, str]]:
+def _finding(look: Look, finding: Finding, width: int, longest: int) -> Iterator[tuple[str, str]]:
     asked = finding.searches and not all(search.from_store for search in finding.searches)
     when = "asked now" if asked else f"from the store, {age(finding.age_s)}"
-    head = f"  {finding.catalog_id:<14} {str(finding.outcome).upper():<16} "
+    head = f"  {finding.catalog_id:<{longest}} {str(finding.outcome).upper():<16} "
     yield from _wrap(f"{finding.release}; {when}", width, head, " " * 6, STYLE.get(finding.outcome, ""))
     yield from _wrap(finding.why, width, " " * 6)
     for candidate in finding.candidates[:SHOWN_CANDIDATES]:

@@ -1,27 +1,24 @@
-"""Finding, checking and opening the file; and turning what SQLite says into errors a person can act on."""
+"""Checking and opening the file."""
 
 from __future__ import annotations
 
 import os
 import sqlite3
 import time
-from collections.abc import Iterator
-from contextlib import closing, contextmanager
+from contextlib import closing
 from pathlib import Path
 from urllib.parse import quote
 
-from sqlalchemy import URL, Connection, Engine, create_engine, event, make_url
-from sqlalchemy.exc import ArgumentError, DBAPIError
+from sqlalchemy import URL, Connection, Engine, create_engine, event
 
-from xmatch.errors import ConfigurationError, StoreBusyError, StoreError, StoreVersionError
-from xmatch.resources import db_path
-from xmatch.store.schema import APPLICATION_ID, SCHEMA_VERSION, metadata, triggers
+from xmatch.errors import StoreError, StoreVersionError
+from xmatch.store import functions
+from xmatch.store.making import make
+from xmatch.store.place import APPLICATION_ID, SCHEMA_VERSION
+from xmatch.store.translating import WRITE, is_busy, translated
 
-ENVIRONMENT = "BLANKFIELD_STORE"
 OLDEST_SQLITE = (3, 37, 0)
 """First SQLite with STRICT tables (sqlite.org/stricttables.html)."""
-WRITE = "blankfield_write"
-"""Execution option of connections that take the write lock when they begin, not when they first write."""
 NETWORK_FILE_SYSTEMS = frozenset(
     (
         "9p",
@@ -50,47 +47,6 @@ NETWORK_FILE_SYSTEMS = frozenset(
 """File systems whose locks and shared memory do not reach the other machines that use them."""
 MOUNTS = Path("/proc/mounts")
 _RETRY_S = 0.02
-
-
-def locate(where: str | Path | None = None) -> Path:
-    """Return the path of the store: the argument, else ``BLANKFIELD_STORE``, else one file in the data folder.
-
-    Parameters
-    ----------
-    where : str or Path, optional
-        A path, or a URL ``sqlite:///path``.
-
-    Raises
-    ------
-    ConfigurationError
-        For a URL of another kind: SQLite files are what there is so far.
-    """
-    if where is None or where == "":
-        where = os.environ.get(ENVIRONMENT) or None
-    if where is None:
-        import platformdirs
-
-        return Path(platformdirs.user_data_dir("blankfield", appauthor=False)) / "blankfield.sqlite"
-    if isinstance(where, str) and ("://" in where or where.startswith("sqlite:")):
-        where = _path_of(where)
-    if str(where) == ":memory:":
-        raise ConfigurationError("the store is ':memory:', which would be lost at once; give the path of a file")
-    return Path(where).expanduser().absolute()
-
-
-def _path_of(text: str) -> str:
-    try:
-        url = make_url(text)
-    except ArgumentError:
-        # the text is not repeated: it may hold a password
-        raise ConfigurationError("the store is a URL that cannot be read; write sqlite:///path or a path") from None
-    if url.get_backend_name() != "sqlite":
-        raise ConfigurationError(
-            f"the store is a {url.get_backend_name()} URL; only sqlite:///path or a path can be used so far"
-        )
-    if not url.database or url.query:
-        raise ConfigurationError(f"the store is {text!r}; write sqlite:///path, without options, or a path")
-    return url.database
 
 
 def connect(path: Path, *, read_only: bool, wait_s: float) -> tuple[Engine, list[str]]:
@@ -131,13 +87,27 @@ def connect(path: Path, *, read_only: bool, wait_s: float) -> tuple[Engine, list
     engine = _engine(path, read_only=read_only, wait_s=wait_s, durable=network is not None)
     try:
         with translated(path):
-            fresh = _is_fresh(engine, path)
-            if fresh and read_only:
+            version = _version(engine, path)
+            if read_only and version == 0:
                 raise StoreError(f"{path} is an empty file, not a store yet; run a look first, or give another --store")
+            if read_only and version < SCHEMA_VERSION:
+                raise StoreVersionError(
+                    f"{path} has schema version {version} and this blankfield reads {SCHEMA_VERSION}; "
+                    "blankfield store upgrade brings it there and keeps a copy; it was left alone"
+                )
             if not read_only:
                 _set_journal(engine, "delete" if network is not None else "wal", wait_s)
-                if fresh:
+                if version == 0:
                     _make(engine, path)
+                elif version < SCHEMA_VERSION:
+                    from xmatch.store.upgrading import upgrade_file
+
+                    copy = upgrade_file(engine.execution_options(**{WRITE: True}), path, version)
+                    if copy is not None:
+                        remarks.append(
+                            f"the store {path} was brought from schema version {version} to {SCHEMA_VERSION}; "
+                            f"{copy} is a copy of it as it was"
+                        )
     except BaseException:
         engine.dispose()
         raise
@@ -173,6 +143,7 @@ def _engine(path: Path, *, read_only: bool, wait_s: float, durable: bool) -> Eng
         # isolation_level None: SQLAlchemy's "begin" below says BEGIN, not the driver at its own time
         connection = sqlite3.connect(uri, uri=True, timeout=wait_s, isolation_level=None, check_same_thread=False)
         connection.execute("PRAGMA foreign_keys = ON")
+        functions.register(connection)
         # with a write-ahead log, NORMAL survives a crash of the program and keeps the file whole in a power cut
         connection.execute(f"PRAGMA synchronous = {'FULL' if durable else 'NORMAL'}")
         return connection
@@ -187,22 +158,39 @@ def _engine(path: Path, *, read_only: bool, wait_s: float, durable: bool) -> Eng
     return engine
 
 
-def _is_fresh(engine: Engine, path: Path) -> bool:
-    """Whether the file holds nothing yet. A file that is neither empty nor ours is refused."""
+def _version(engine: Engine, path: Path) -> int:
+    """Schema version of the file, 0 when it holds nothing yet. A file that is neither empty nor ours is refused."""
     with engine.connect() as connection:
         ours = connection.exec_driver_sql("PRAGMA application_id").scalar_one()
-        version = connection.exec_driver_sql("PRAGMA user_version").scalar_one()
+        version = int(connection.exec_driver_sql("PRAGMA user_version").scalar_one())
         things = connection.exec_driver_sql("SELECT count(*) FROM sqlite_master").scalar_one()
     if ours != APPLICATION_ID:
         if ours == 0 and version == 0 and things == 0:
-            return True
+            return 0
         raise StoreError(f"{path} is an SQLite file but not a store of blankfield; left alone; give another path")
-    if version != SCHEMA_VERSION:
+    if not 1 <= version <= SCHEMA_VERSION:
         raise StoreVersionError(
             f"{path} has schema version {version}, this blankfield reads and writes {SCHEMA_VERSION}; "
             f"use the blankfield that made it, or give another --store; it was left alone"
         )
-    return False
+    return version
+
+
+def version_of(path: Path) -> int:
+    """Return the schema version of a store without changing anything.
+
+    Raises
+    ------
+    StoreError, StoreVersionError
+        When there is none, it is not a store, or of a version yet to come.
+    """
+    _check_place(path, True)
+    engine = _engine(path, read_only=True, wait_s=1.0, durable=False)
+    try:
+        with translated(path):
+            return _version(engine, path)
+    finally:
+        engine.dispose()
 
 
 def _set_journal(engine: Engine, mode: str, wait_s: float) -> None:
@@ -218,7 +206,7 @@ def _set_journal(engine: Engine, mode: str, wait_s: float) -> None:
                     driver.execute(f"PRAGMA journal_mode = {mode}").fetchone()
                 return
             except sqlite3.Error as fault:
-                if not _is_busy(fault) or time.monotonic() > deadline:
+                if not is_busy(fault) or time.monotonic() > deadline:
                     raise
                 time.sleep(_RETRY_S)
 
@@ -228,22 +216,7 @@ def _make(engine: Engine, path: Path) -> None:
     with engine.execution_options(**{WRITE: True}).begin() as connection:
         if connection.exec_driver_sql("PRAGMA application_id").scalar_one() == APPLICATION_ID:
             return
-        metadata.create_all(connection)
-        for statement in (*triggers(), *statements(db_path("views.sql").read_text(encoding="utf-8"))):
-            connection.exec_driver_sql(statement)
-        connection.exec_driver_sql(f"PRAGMA application_id = {APPLICATION_ID}")
-        connection.exec_driver_sql(f"PRAGMA user_version = {SCHEMA_VERSION}")
-
-
-def statements(script: str) -> list[str]:
-    """Split an SQL script into its statements."""
-    found, pending = [], ""
-    for line in script.splitlines(keepends=True):
-        pending += line
-        if sqlite3.complete_statement(pending):
-            found.append(pending.strip())
-            pending = ""
-    return found
+        make(connection)
 
 
 def network_file_system(path: Path, mounts: str | None = None) -> str | None:
@@ -272,35 +245,3 @@ def network_file_system(path: Path, mounts: str | None = None) -> str | None:
         if place.is_relative_to(point) and len(point.parts) >= longest:
             longest, kind = len(point.parts), fields[2]
     return kind if kind in NETWORK_FILE_SYSTEMS else None
-
-
-@contextmanager
-def translated(path: Path) -> Iterator[None]:
-    """Turn what the driver says inside the block into a :class:`StoreError` that names the file."""
-    try:
-        yield
-    except DBAPIError as fault:
-        raise _as_store_error(fault.orig or fault, path) from fault
-    except sqlite3.Error as fault:
-        raise _as_store_error(fault, path) from fault
-
-
-def _is_busy(fault: BaseException | None) -> bool:
-    return str(getattr(fault, "sqlite_errorname", "")).startswith(("SQLITE_BUSY", "SQLITE_LOCKED"))
-
-
-def _as_store_error(fault: BaseException, path: Path) -> StoreError:
-    name = str(getattr(fault, "sqlite_errorname", ""))
-    if _is_busy(fault):
-        return StoreBusyError(f"{path} is locked by another writer; wait until it has finished, then repeat")
-    if name.startswith("SQLITE_FULL"):
-        return StoreError(f"no room left to write {path}; free some space, then repeat; what was stored is whole")
-    if name.startswith(("SQLITE_READONLY", "SQLITE_CANTOPEN", "SQLITE_PERM")):
-        return StoreError(f"{path} cannot be opened for this ({fault}); check its permissions and those of its folder")
-    if name.startswith("SQLITE_NOTADB"):
-        return StoreError(f"{path} is not an SQLite file; it was left alone; give another --store")
-    if name.startswith("SQLITE_CORRUPT"):
-        return StoreError(f"{path} is damaged ({fault}); restore it from a copy, or look again with another --store")
-    if name.startswith("SQLITE_CONSTRAINT"):
-        return StoreError(f"{path} refused what was to be stored ({fault}); nothing of it was kept; please report this")
-    return StoreError(f"{path}: {fault}; the tables are told in db/README.md")

@@ -37,11 +37,10 @@ from xmatch.records import (
     StandingWord,
     Waveband,
 )
+from xmatch.store.place import APPLICATION_ID, REVISION, REVISION_TABLE, SCHEMA_VERSION
 
-SCHEMA_VERSION = 1
-"""Kept in ``PRAGMA user_version``; another one is never opened."""
-APPLICATION_ID = 0x424C4B46
-"""``BLKF`` in ASCII, kept in ``PRAGMA application_id``."""
+__all__ = ["APPEND_ONLY", "APPLICATION_ID", "REVISION", "REVISION_TABLE", "SCHEMA_VERSION", "metadata", "triggers"]
+
 HEALPIX_ORDER = 29
 """Order of the nested HEALPix index: a coarser order is a shift by two bits a step."""
 
@@ -221,6 +220,7 @@ search = _table(
     _int("tries", "How often it was asked until this came.", unit="count"),
     _text("client", "Versions of what asked and decoded."),
     Index("search_target_id_catalog_key_table_name", "target_id", "catalog_key", "table_name"),
+    Index("search_asked_at", "asked_at"),
 )
 
 row = _table(
@@ -379,15 +379,31 @@ class_test = _table(
     clustered=True,
 )
 
+schema_revision = _table(
+    REVISION_TABLE,
+    "Which migration the tables are at. One row.",
+    _text("version_num", "Number of the last migration.", primary_key=True),
+)
+
 APPEND_ONLY = (search, row, flux)
 """Tables in which nothing is ever changed or removed; triggers refuse it."""
 
 
-def triggers() -> list[str]:
-    """Return the SQLite statements that keep history from being rewritten."""
-    return [
-        f"CREATE TRIGGER {table.name}_no_{what.lower()} BEFORE {what} ON {table.name} "
-        f"BEGIN SELECT RAISE(ABORT, '{table.name} is append-only'); END"
-        for table in APPEND_ONLY
-        for what in ("UPDATE", "DELETE")
+def triggers(dialect: str = "sqlite", tables: Iterable[Table] = APPEND_ONLY) -> list[str]:
+    """Return the statements that keep the history in some tables from being rewritten."""
+    pairs = [(table.name, what) for table in tables for what in ("UPDATE", "DELETE")]
+    if dialect == "sqlite":
+        return [
+            f"CREATE TRIGGER {name}_no_{what.lower()} BEFORE {what} ON {name} "
+            f"BEGIN SELECT RAISE(ABORT, '{name} is append-only'); END"
+            for name, what in pairs
+        ]
+    refuse = (
+        "CREATE OR REPLACE FUNCTION refuse_change() RETURNS trigger LANGUAGE plpgsql AS "
+        "$$ BEGIN RAISE EXCEPTION '%% is append-only', TG_TABLE_NAME USING ERRCODE = 'integrity_constraint_violation'; END $$"
+    )
+    return [refuse] + [
+        f'CREATE OR REPLACE TRIGGER {name}_no_{what.lower()} BEFORE {what} ON "{name}" '
+        "FOR EACH STATEMENT EXECUTE FUNCTION refuse_change()"
+        for name, what in pairs
     ]

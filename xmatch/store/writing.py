@@ -7,12 +7,11 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 from sqlalchemy import Connection, Table, func, insert, select
 
 from xmatch.errors import RangeError, StoreError
-from xmatch.records import Band, Floats, Reply, ReplyStatus, Rows, Search, Target
-from xmatch.store import schema
+from xmatch.records import Band, Reply, ReplyStatus, Rows, Search, Target
+from xmatch.store import cones, schema
 from xmatch.store.border import computed, integer, json_text, measured, required, text, utc_text
 
 CHUNK = 20_000
@@ -197,42 +196,39 @@ def _put_rows(connection: Connection, search_id: int, catalog_key: int, catalog_
             f"{catalog_id}: row {text(rows.key[first])!r} lies at RA {ra[first]}, Dec {dec[first]} deg; the store "
             "takes 0 to 360 and -90 to 90; leave rows without a position out"
         )
-    hpx29 = healpix(ra, dec)
-    columns = {
-        "hpx29": hpx29.tolist(),
-        "search_id": [search_id] * n,
-        "ordinal": list(range(n)),
-        "source_key": [text(key) for key in rows.key],
-        "ra_deg": ra.tolist(),
-        "dec_deg": dec.tolist(),
-        **{name: measured(getattr(rows, name)) for name in _MEASURED},
-        "raw": [json_text(served) for served in rows.raw] if rows.raw else [None] * n,
-    }
-    listed = [dict(zip(columns, values, strict=True)) for values in zip(*columns.values(), strict=True)]
+    hpx29 = cones.index(ra, dec)
     # in the order of the table: neighbours on the sky go to the same page
-    listed.sort(key=lambda entry: entry["hpx29"])
-    insert_many(connection, schema.row, listed)
+    order = np.argsort(hpx29, kind="stable")
+    ordered = order.tolist()
+    columns: dict[str, list[Any]] = {
+        "hpx29": hpx29[order].tolist(),
+        "search_id": [search_id] * n,
+        "ordinal": ordered,
+        "source_key": [text(rows.key[i]) for i in ordered],
+        "ra_deg": ra[order].tolist(),
+        "dec_deg": dec[order].tolist(),
+        **{name: measured(np.ma.asarray(getattr(rows, name))[order]) for name in _MEASURED},
+        "raw": [json_text(rows.raw[i]) for i in ordered] if rows.raw else [None] * n,
+    }
+    insert_columns(connection, schema.row, columns)
     band_ids = _band_ids(connection, catalog_key)
     for name, photometry in rows.flux.items():
         if name not in band_ids:
             raise StoreError(f"{catalog_id}: the store knows no band {name!r} of it; put_catalog comes first")
         value, error = measured(photometry.value), measured(photometry.error)
         limit = np.asarray(photometry.is_limit, dtype=bool).tolist()
-        insert_many(
+        given = [i for i in range(n) if value[i] is not None or error[i] is not None or limit[i]]
+        insert_columns(
             connection,
             schema.flux,
-            [
-                {
-                    "search_id": search_id,
-                    "ordinal": ordinal,
-                    "band_id": band_ids[name],
-                    "value": value[ordinal],
-                    "error": error[ordinal],
-                    "is_limit": int(limit[ordinal]),
-                }
-                for ordinal in range(n)
-                if value[ordinal] is not None or error[ordinal] is not None or limit[ordinal]
-            ],
+            {
+                "search_id": [search_id] * len(given),
+                "ordinal": given,
+                "band_id": [band_ids[name]] * len(given),
+                "value": [value[i] for i in given],
+                "error": [error[i] for i in given],
+                "is_limit": [int(limit[i]) for i in given],
+            },
         )
 
 
@@ -250,27 +246,6 @@ def _check_shapes(catalog_id: str, rows: Rows, n: int) -> None:
     wrong = {name: size for name, size in sizes.items() if size != n}
     if wrong:
         raise RangeError(f"{catalog_id}: {n} rows, but {wrong}; every array must have one value a row")
-
-
-def healpix(ra_deg: Floats, dec_deg: Floats) -> NDArray[np.int64]:
-    """Return the nested HEALPix index of order 29 of positions.
-
-    Parameters
-    ----------
-    ra_deg, dec_deg : array of float, shape (n,)
-        ICRS degrees, finite.
-
-    References
-    ----------
-    Gorski et al. 2005, ApJ 622, 759.
-    """
-    # imported here: it brings astropy, which a warm answer does without
-    import astropy.units as u
-    from astropy.coordinates import Latitude, Longitude
-    from cdshealpix.nested import lonlat_to_healpix
-
-    index = lonlat_to_healpix(Longitude(ra_deg, u.deg), Latitude(dec_deg, u.deg), schema.HEALPIX_ORDER, num_threads=1)
-    return np.atleast_1d(index).astype(np.int64)
 
 
 def _band_ids(connection: Connection, catalog_key: int) -> dict[str, int]:
@@ -292,6 +267,20 @@ def insert_many(connection: Connection, table: Table, listed: Sequence[dict[str,
     statement = insert(table)
     for start in range(0, len(listed), CHUNK):
         connection.execute(statement, listed[start : start + CHUNK])
+
+
+def insert_columns(connection: Connection, table: Table, columns: Mapping[str, Sequence[Any]]) -> None:
+    """Insert lines that are given column by column, with the driver's own statement.
+
+    A dictionary for each line would take longer than the writing.
+    """
+    mark = "?" if connection.dialect.name == "sqlite" else "%s"
+    names = ", ".join(f'"{name}"' for name in columns)
+    statement = f'INSERT INTO "{table.name}" ({names}) VALUES ({", ".join([mark] * len(columns))})'
+    n = len(next(iter(columns.values())))
+    for start in range(0, n, CHUNK):
+        part = (values[start : start + CHUNK] for values in columns.values())
+        connection.exec_driver_sql(statement, list(zip(*part, strict=True)))
 
 
 def put_assumptions(connection: Connection, name: str, content: Mapping[str, object]) -> None:
