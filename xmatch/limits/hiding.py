@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from xmatch.assumptions import Assumptions
+from xmatch.constants import ARCSEC2_PER_DEG2
 from xmatch.errors import RangeError
 from xmatch.records import Floats, Limit, Quantity
 
@@ -45,6 +46,22 @@ def hidden_flux(
     """
     flux, r = np.asarray(neighbour_flux, dtype=float), np.asarray(separation_arcsec, dtype=float)
     return np.where(r < deblend * fwhm_arcsec, flux, residual * profile(r, fwhm_arcsec) * flux)
+
+
+def radio_floor(neighbour_flux: ArrayLike, dynamic_range: float) -> Floats:
+    """Flux below which the sidelobes of each neighbour hide a source: S / DR, same unit (definition of dynamic range)."""
+    if not dynamic_range > 1.0:
+        raise RangeError(f"dynamic range {dynamic_range} is not allowed; it must be above 1")
+    return np.asarray(neighbour_flux, dtype=float) / dynamic_range
+
+
+def beams_per_source(beam_fwhm_arcsec: ArrayLike, density_per_deg2: ArrayLike) -> Floats:
+    """Gaussian beams per source; fewer than 20 to 30 mean confusion (Condon 1974, ApJ 188, 279; the number is common practice)."""
+    fwhm, density = np.asarray(beam_fwhm_arcsec, dtype=float), np.asarray(density_per_deg2, dtype=float)
+    if not np.all(fwhm > 0.0) or not np.all(density > 0.0):
+        raise RangeError(f"beam {beam_fwhm_arcsec} arcsec and density {density_per_deg2} must both be above 0")
+    solid = np.pi * np.square(fwhm) / (4.0 * np.log(2.0))
+    return ARCSEC2_PER_DEG2 / (solid * density)
 
 
 def raise_limit(

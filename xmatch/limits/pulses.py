@@ -9,6 +9,9 @@ from xmatch.errors import RangeError
 from xmatch.limits.bounds import _fraction
 from xmatch.records import Floats
 
+PHASE_TURNS = 6
+"""Turns around the exposure over which a predicted phase is summed: 6 sigma when the error is one period."""
+
 
 def pulse_peak_limit(
     image_limit: ArrayLike, integration_s: ArrayLike, width_s: ArrayLike, pulses: ArrayLike = 1
@@ -70,3 +73,60 @@ def active_fraction_bound(epochs: ArrayLike, confidence: ArrayLike) -> Floats:
     if np.any(n < 1.0):
         raise RangeError(f"{epochs} epochs is not allowed; at least one is needed")
     return -np.expm1(np.log1p(-_fraction("confidence", confidence)) / n)
+
+
+def pulse_averaged_limit(image_limit: ArrayLike, integration_s: ArrayLike, on_s: ArrayLike) -> Floats:
+    """Limit on the mean flux over the time a pulse is on, from an image longer than that: S T / t_on (definition)."""
+    return pulse_peak_limit(image_limit, integration_s, on_s, 1)
+
+
+def period_averaged_limit(peak_limit: ArrayLike, width_s: ArrayLike, period_s: ArrayLike) -> Floats:
+    """Limit on the mean over the period from one on the peak: S w / P, w the equivalent width (definition)."""
+    p, w, _ = _times(period_s, width_s, 0.0)
+    if np.any(w > p):
+        raise RangeError(f"width {width_s} s is not allowed; a pulse must be no longer than its period {period_s} s")
+    return np.asarray(peak_limit, dtype=float) * w / p
+
+
+def predicted_pulse_probability(
+    start_s: ArrayLike, integration_s: ArrayLike, period_s: ArrayLike, period_error_s: ArrayLike,
+    epoch_error_s: ArrayLike, width_s: ArrayLike,
+) -> Floats:  # fmt: skip
+    """Chance that an exposure holds a whole pulse that an ephemeris predicts.
+
+    Parameters
+    ----------
+    start_s : array_like
+        Start of the exposure after the reference pulse centre, s (negative: before).
+    integration_s, period_s, width_s : array_like
+        Exposure (>= 0), period (> 0), pulse width (>= 0), s.
+    period_error_s, epoch_error_s : array_like
+        One-sigma errors, >= 0, taken as independent.
+
+    Notes
+    -----
+    The error of a predicted centre is sqrt(epoch_error^2 + (k period_error)^2) after k turns (linear propagation);
+    the Gaussian is summed over the turns around the exposure. When it exceeds a period the random-phase value is left.
+    """
+    from scipy.special import ndtr
+
+    p, w, t = _times(period_s, width_s, integration_s)
+    begin, dp, de = (np.asarray(v, dtype=float) for v in (start_s, period_error_s, epoch_error_s))
+    if np.any(dp < 0.0) or np.any(de < 0.0):
+        raise RangeError("errors of an ephemeris must be 0 or more")
+    turns = (begin + 0.5 * t) / p
+    spread = np.maximum(np.hypot(de, turns * dp), 1.0e-12 * p)
+    room = t - w
+    # distance of the nearest predicted centre from the middle of the exposure
+    off = (turns - np.round(turns)) * p
+    total = np.zeros(np.broadcast_shapes(off.shape, spread.shape, np.shape(room)))
+    for k in range(-PHASE_TURNS, PHASE_TURNS + 1):
+        centre = k * p - off
+        total = total + ndtr((centre + 0.5 * room) / spread) - ndtr((centre - 0.5 * room) / spread)
+    at_random = contains_whole_pulse_probability(p, w, t)
+    return np.where(room < 0.0, 0.0, np.where(spread > p, at_random, np.minimum(1.0, total)))
+
+
+def not_missed_confidence(active_fraction: ArrayLike, seen_probability: ArrayLike, epochs: ArrayLike) -> Floats:
+    """Confidence that a pulse above the limit was not missed: 1 - (1 - f p)^N, a function of the activity (binomial)."""
+    return 1.0 - all_blank_probability(active_fraction, seen_probability, epochs)
