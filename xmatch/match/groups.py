@@ -30,6 +30,7 @@ from xmatch.records import Bools, Floats, Position, Rows
 
 SAME_DIGITS = 9
 """Digits to which two odds must differ to be told apart, so that the order of rows never decides (our choice)."""
+ARCSEC_PER_DEG = 3600.0
 
 
 @dataclass(frozen=True)
@@ -128,6 +129,7 @@ def _joined(listed: Sequence[Listed], assumptions: Assumptions) -> list[tuple[tu
     links = [
         link
         for a in range(len(listed))
+        if listed[a].weighed.compatible.any()
         for b in range(len(listed))
         if a != b
         for link in _links(listed, a, b, assumptions)
@@ -157,6 +159,8 @@ def _links(
     if not len(left.rows) or not len(right.rows):
         return []
     seeds = np.flatnonzero(left.weighed.compatible)
+    if _far_apart(left.rows, seeds, right.rows, assumptions):
+        return []
     i, j, there, near = _one_way(left.rows, seeds, right.rows, right.weighed.density_per_deg2, assumptions)
     good = near & (there >= assumptions.together_odds)
     i, j, there = i[good], j[good], there[good]
@@ -169,6 +173,22 @@ def _links(
         for x, y, p in zip(i.tolist(), j.tolist(), there.tolist(), strict=True)
     ]
     return [link for link in both if link[0] >= assumptions.together_odds]
+
+
+def _far_apart(one: Rows, chosen: NDArray[np.intp], other: Rows, assumptions: Assumptions) -> bool:
+    """Whether no row of the other list can lie within reach: most pairs of catalogs end here, cheaply."""
+    k = assumptions.compatible_sigma
+    ends = (one.epoch_yr.min(), one.epoch_yr.max(), other.epoch_yr.min(), other.epoch_yr.max())
+    span = float(max(ends) - min(ends))
+    fastest = sum(
+        float(np.max(np.hypot(np.nan_to_num(rows.pm_ra_mas_yr), np.nan_to_num(rows.pm_dec_mas_yr))))
+        for rows in (one, other)
+    )
+    slack = span * (fastest + k * (_motion_spread(one, assumptions) + _motion_spread(other, assumptions))) / 1e3
+    sigma = float(np.max(one.sigma_major_arcsec[chosen])) + float(np.max(other.sigma_major_arcsec))
+    reach = k * (sigma + 2.0 * assumptions.frame_sigma_arcsec + 2.0 * assumptions.parallax_mas / 1e3) + slack
+    apart = np.abs(np.subtract.outer(one.dec_deg[chosen], other.dec_deg)).min() * ARCSEC_PER_DEG
+    return bool(apart > reach)
 
 
 def _one_way(
@@ -193,6 +213,8 @@ def _one_way(
     _, north1 = offsets_arcsec(ra0, dec0, picked.ra_deg, picked.dec_deg)
     _, north2 = offsets_arcsec(ra0, dec0, other.ra_deg, other.dec_deg)
     i, j = pairs(north1, reach, north2)
+    if not i.size:
+        return nothing, nothing, np.empty(0), np.empty(0, dtype=bool)
     first, second = _taken(picked, i), _taken(other, j)
     dt = second.epoch_yr - first.epoch_yr
     moves = _has_motion(first) | ~_has_motion(second)  # the one whose motion is known
