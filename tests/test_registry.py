@@ -22,6 +22,7 @@ from xmatch.demo.sky import BUILT_TO_SHOW
 from xmatch.inspection import check_catalogs, mirror_catalogs
 from xmatch.pipeline import LookOptions, look
 from xmatch.records import Finding, Look, Outcome, Position, ReplyStatus
+from xmatch.report import words
 from xmatch.store.schema_lists import CheckVerdict
 from xmatch.store.store import Store, open_store
 
@@ -88,7 +89,9 @@ def test_every_catalog_is_checked_then_asked_and_shows_what_the_sky_was_built_to
 def test_what_nobody_confirmed_is_not_asked_and_said(store: Store, transport: Transport) -> None:
     answer = at(store, transport, "glostar", "nvss", "lotss-dr3")
     assert [f.catalog_id for f in answer.findings] == ["nvss"]
+    assert answer.waiting == ("glostar", "lotss-dr3")
     assert any("2 catalogs were not asked" in remark and "glostar, lotss-dr3" in remark for remark in answer.remarks)
+    assert "2 catalogs wait for a check and were not asked." in words.answer(answer)
 
 
 def test_a_check_of_another_state_of_the_file_unlocks_nothing(store: Store, transport: Transport) -> None:

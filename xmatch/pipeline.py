@@ -109,6 +109,7 @@ def look(
         offline=options.offline,
         store_name=store.name,
         remarks=(*store.remarks, *waiting_remark(waiting)),
+        waiting=waiting,
     )
     if options.partial:
         if run_id != NO_RUN:
@@ -165,6 +166,7 @@ def conclude(
     offline: bool,
     store_name: str,
     remarks: Sequence[str] = (),
+    waiting: Sequence[str] = (),
 ) -> Look:
     """Draw everything that can be drawn from the evidence. Pure but for the packaged class files."""
     weighed = weigh_all(target, evidence, assumptions)
@@ -195,4 +197,5 @@ def conclude(
         sources=sources,
         none_listed=none_listed,
         expected_distinct=expected_distinct,
+        waiting=tuple(waiting),
     )

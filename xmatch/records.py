@@ -489,3 +489,5 @@ class Look:
     """Posterior probability that the target is none of them."""
     expected_distinct: float | None = None
     """Expected unrelated objects, each counted once however many catalogs list it."""
+    waiting: tuple[str, ...] = ()
+    """Catalogs that were not asked, because nobody has confirmed their columns."""

@@ -188,9 +188,13 @@ def test_the_demo_is_whole_and_says_that_it_is_invented() -> None:
 
 
 def test_the_demo_shows_trouble_as_trouble() -> None:
-    done = run("demo", "--json", "--trouble", "nvss=html", "--trouble", "vlass-ql1=unavailable")
+    done = run(
+        "demo", "--json", "--trouble", "nvss=html", "--trouble", "vlass-ql1=unavailable", "--trouble", "lpt-cat=html",
+        "--trouble", "fermi-4fgl-dr4=closed",
+    )  # fmt: skip
     said = {finding["catalog_id"]: finding["outcome"] for finding in json.loads(done.stdout)["findings"]}
     assert (said["nvss"], said["vlass-ql1"]) == ("misread", "unanswered")
+    assert (said["lpt-cat"], said["fermi-4fgl-dr4"]) == ("misread", "unanswered")
 
 
 def test_catalogs_are_listed_and_shown() -> None:

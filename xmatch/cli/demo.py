@@ -94,5 +94,6 @@ def cause_trouble(archive: object, one: str) -> None:
             f"and a fault among {', '.join(KINDS)}"
         )
     for table in registry[catalog_id].tables:
-        remote = table.remote_table or table.address.partition("/conesearch/")[2]
-        archive.misbehave(remote, Fault(kind))  # type: ignore[attr-defined]
+        remote = table.remote_table or table.address.partition("/conesearch/")[2] or catalog_id
+        for name in (remote, f"{remote}/sources"):
+            archive.misbehave(name, Fault(kind))  # type: ignore[attr-defined]

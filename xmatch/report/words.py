@@ -66,6 +66,9 @@ def answer(look: Look) -> str:
     )
     if failed:
         text += f" {len(failed)} of {n} gave no usable answer ({_names(failed)}): that is not a non-detection."
+    if look.waiting:
+        n_waiting = _count(len(look.waiting), "catalog waits", "catalogs wait")
+        text += f" {n_waiting} for a check and {'was' if len(look.waiting) == 1 else 'were'} not asked."
     return clean(text)
 
 
