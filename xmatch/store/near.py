@@ -8,6 +8,7 @@ from __future__ import annotations
 import json
 import math
 from collections.abc import Iterable, Mapping, Sequence
+from operator import itemgetter
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -22,13 +23,12 @@ _NEAR = """
     CROSS JOIN row
     WHERE row.hpx29 BETWEEN {low} AND {high}
 """
-_ROWS = """
-    SELECT catalog.catalog_id, catalog.release, search.table_name, near.search_id, near.ordinal, near.source_key,
-           near.ra_deg, near.dec_deg, near.h
-    FROM {near} AS near
-    {join} search ON search.search_id = near.search_id
-    {join} catalog ON catalog.catalog_key = search.catalog_key
+_SEARCHES = """
+    SELECT search.search_id, catalog.catalog_id, catalog.release, search.table_name
+    FROM search JOIN catalog ON catalog.catalog_key = search.catalog_key
+    WHERE search.search_id IN ({wanted})
 """
+_BY_H = itemgetter(5)
 _H = (
     "power(sin(radians(row.dec_deg - {dec}) / 2.0), 2)"
     " + {cos_dec} * cos(radians(row.dec_deg)) * power(sin(radians(row.ra_deg - {ra}) / 2.0), 2)"
@@ -40,29 +40,24 @@ class Dialect(NamedTuple):
     """The statements of one kind of database, with its own marks for parameters."""
 
     within: str
-    within_each: str
-    keys: str
+    searches: str
     pairs: str
 
 
 def _sqlite() -> Dialect:
+    h = _H.format(dec=":dec", ra=":ra", cos_dec=":cos_dec")
     near = _NEAR.format(
-        h=_H.format(dec=":dec", ra=":ra", cos_dec=":cos_dec"),
+        h=h,
         stretches="json_each(:stretches) AS stretch",
         low="json_extract(stretch.value, '$[0]')",
         high="json_extract(stretch.value, '$[1]')",
     )
-    # CROSS JOIN fixes the order: with statistics the planner would go through all searches first
-    rows = _ROWS.format(near=f"({near})", join="CROSS JOIN")
-    wanted = "WITH wanted AS MATERIALIZED (SELECT json_extract(value, '$[0]') AS catalog_key, json_extract(value, '$[1]') AS h FROM json_each(:wanted)) "
     return Dialect(
-        within=rows + "WHERE near.h <= :h",
-        within_each=wanted + rows + "CROSS JOIN wanted ON wanted.catalog_key = catalog.catalog_key WHERE near.h <= wanted.h",
-        keys="SELECT catalog_id, catalog_key FROM catalog",
-        pairs="SELECT row.search_id, row.ordinal, " + _H.format(dec=":dec", ra=":ra", cos_dec=":cos_dec")
+        within=f"SELECT * FROM ({near}) WHERE h <= :h",
+        searches=_SEARCHES.format(wanted="SELECT value FROM json_each(:wanted)"),
+        pairs="SELECT row.search_id, row.ordinal, " + h
         + " AS h FROM json_each(:stretches) AS stretch CROSS JOIN row WHERE row.hpx29 BETWEEN "
-        "json_extract(stretch.value, '$[0]') AND json_extract(stretch.value, '$[1]') AND "
-        + _H.format(dec=":dec", ra=":ra", cos_dec=":cos_dec") + " <= :h",
+        "json_extract(stretch.value, '$[0]') AND json_extract(stretch.value, '$[1]') AND " + h + " <= :h",
     )  # fmt: skip
 
 
@@ -73,18 +68,10 @@ def _postgresql() -> Dialect:
         " FROM json_array_elements(%(stretches)s::json) AS part) AS stretch"
     )
     near = _NEAR.format(h=h, stretches=stretches, low="stretch.low", high="stretch.high")
-    # materialised, because this planner would rather come in by search and read every row of it
-    near = f"near AS MATERIALIZED ({near})"
-    rows = _ROWS.format(near="near", join="JOIN")
-    wanted = (
-        "wanted AS MATERIALIZED (SELECT (part ->> 0)::bigint AS catalog_key, (part ->> 1)::float8 AS h"
-        " FROM json_array_elements(%(wanted)s::json) AS part)"
-    )
     return Dialect(
-        within=f"WITH {near} {rows} WHERE near.h <= %(h)s",
-        within_each=f"WITH {near}, {wanted} {rows} JOIN wanted ON wanted.catalog_key = catalog.catalog_key "
-        "WHERE near.h <= wanted.h",
-        keys="SELECT catalog_id, catalog_key FROM catalog",
+        # materialised, because this planner would rather work out the separation twice
+        within=f"WITH near AS MATERIALIZED ({near}) SELECT * FROM near WHERE h <= %(h)s",
+        searches=_SEARCHES.format(wanted="SELECT value::bigint FROM json_array_elements_text(%(wanted)s::json)"),
         pairs=f"SELECT row.search_id, row.ordinal, {h} AS h FROM {stretches} CROSS JOIN row "
         f"WHERE row.hpx29 BETWEEN stretch.low AND stretch.high AND {h} <= %(h)s",
     )
@@ -115,9 +102,14 @@ def _arcsec(h: float) -> float:
     return math.degrees(2.0 * math.asin(min(1.0, math.sqrt(h)))) * 3600.0
 
 
+Origins = dict[int, tuple[str, str, str]]
+"""Catalog, release and table of each search: a search never changes, so that they are looked up once."""
+
+
 def near(
     cursor: Any,
     dialect: Dialect,
+    origins: Origins,
     ra_deg: float,
     dec_deg: float,
     radius_arcsec: float | Mapping[str, float],
@@ -125,33 +117,43 @@ def near(
     history: bool = False,
 ) -> list[Near]:
     """Return the rows within a radius, nearest first; see :meth:`xmatch.store.store.Store.near`."""
-    centre = {"ra": ra_deg, "dec": dec_deg, "cos_dec": math.cos(math.radians(dec_deg))}
-    if isinstance(radius_arcsec, Mapping):
-        for radius in radius_arcsec.values():
+    radii = radius_arcsec if isinstance(radius_arcsec, Mapping) else None
+    if radii is not None:
+        for radius in radii.values():
             cone.check_cone(ra_deg, dec_deg, radius)
-        cursor.execute(dialect.keys)
-        wanted = [(key, _h(radius_arcsec[name])) for name, key in cursor.fetchall() if name in radius_arcsec]
-        if not wanted:
+        if not radii:
             return []
-        stretches = cone.ranges(ra_deg, dec_deg, max(radius_arcsec.values()))
-        more = {"stretches": json.dumps(stretches), "wanted": json.dumps(wanted)}
-        cursor.execute(dialect.within_each, centre | more)
-    else:
-        stretches = cone.ranges(ra_deg, dec_deg, radius_arcsec)
-        cursor.execute(dialect.within, centre | {"stretches": json.dumps(stretches), "h": _h(radius_arcsec)})
-    found = cursor.fetchall()
+    widest = max(radii.values()) if radii is not None else float(radius_arcsec)  # type: ignore[arg-type]
+    stretches = cone.ranges(ra_deg, dec_deg, widest)
+    values = {
+        "ra": ra_deg, "dec": dec_deg, "cos_dec": math.cos(math.radians(dec_deg)), "h": _h(widest),
+        "stretches": _as_json(stretches),
+    }  # fmt: skip
+    found = cursor.execute(dialect.within, values).fetchall()
+    unknown = {line[0] for line in found} - origins.keys()
+    if unknown:
+        cursor.execute(dialect.searches, {"wanted": json.dumps(sorted(unknown))})
+        origins.update((search_id, (*origin,)) for search_id, *origin in cursor.fetchall())
+    if radii is not None:
+        allowed = {name: _h(radius) for name, radius in radii.items()}
+        found = [line for line in found if line[5] <= allowed.get(origins[line[0]][0], -1.0)]
     if not history:
-        found = _latest(found)
-    found.sort(key=lambda line: line[8])
-    return [Near._make((*line[:8], _arcsec(line[8]))) for line in found]
+        found = _latest(found, origins)
+    found.sort(key=_BY_H)
+    return [Near._make((*origins[line[0]], *line[:5], _arcsec(line[5]))) for line in found]
 
 
-def _latest(found: Iterable[Any]) -> list[Any]:
+def _as_json(stretches: Sequence[tuple[int, int]]) -> str:
+    """Pairs of whole numbers; a tuple's own text needs only other brackets."""
+    return str(stretches).replace("(", "[").replace(")", "]")
+
+
+def _latest(found: Iterable[Any], origins: Origins) -> list[Any]:
     """Of several listings of one source of one table, that of the latest search."""
     kept: dict[tuple[Any, ...], Any] = {}
     for line in found:
-        key = (line[0], line[1], line[2], line[5])
-        if key not in kept or kept[key][3] < line[3]:
+        key = (origins[line[0]], line[2])
+        if key not in kept or kept[key][0] < line[0]:
             kept[key] = line
     return list(kept.values())
 

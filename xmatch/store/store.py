@@ -91,6 +91,7 @@ class Store:
         self.read_only = read_only
         self._engine: Engine | None = engine
         self._remarks = list(remarks)
+        self._origins: near.Origins = {}
         # which state of each catalog file this process works with
         self._catalog_keys: dict[tuple[str, str], int] = {}
 
@@ -364,7 +365,7 @@ class Store:
         No row does not mean an empty sky: the store holds what was asked for.
         """
         with self._driver_cursor() as (cursor, dialect):
-            return near.near(cursor, dialect, ra_deg, dec_deg, radius_arcsec, history=history)
+            return near.near(cursor, dialect, self._origins, ra_deg, dec_deg, radius_arcsec, history=history)
 
     def near_many(self, ra_deg: Floats, dec_deg: Floats, radius_arcsec: Floats | float) -> Pairs:
         """Return which stored rows lie near which of many positions, every listing, in the order of the positions.
