@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -133,3 +134,36 @@ def test_each_outcome_through_each_adapter(adapter: str, scene: Scene, make: Cal
         assert finding.limits
     if scene.outcome is Outcome.COVERAGE_UNKNOWN:
         assert all("coverage unproven" in limit.flag for limit in finding.limits)
+
+
+@pytest.mark.parametrize(
+    "fault", [None, Fault("html"), Fault("unavailable")], ids=["answered", "misread", "unanswered"]
+)
+def test_too_few_rows_are_asked_for_over_a_wider_cone(make: Callable, tmp_path: Path, fault: Fault | None) -> None:
+    catalog, table = make("vizier", Scene(Outcome.BLANK, n_around=600))
+    catalog = replace(catalog, neighbourhood_arcsec=300.0)
+    with EmbeddedArchive([table]) as archive, open_store(tmp_path / "scene.sqlite") as store:
+        transport = Transport(addresses=archive.address, sleep=lambda seconds: None)
+        log = archive.log
+
+        def fail_from_the_second(request: Any) -> None:
+            log(request)
+            if fault is not None and len(archive.requests) == 2:
+                archive.misbehave("basic", fault)
+
+        archive.log = fail_from_the_second  # type: ignore[method-assign]
+        options = LookOptions(assumptions=Assumptions(draws=1000))
+        how = {"store": store, "catalogs": {"scene": catalog}, "transport": transport, "options": options}
+        first = look(TARGET, **how)
+        asked = len(archive.requests)
+        second = look(TARGET, **how)
+        assert len(archive.requests) == asked
+        transport.close_session()
+    least = Assumptions().density_min_rows
+    for answer in (first, second):
+        (finding,) = answer.findings
+        assert finding.outcome is Outcome.BLANK
+        (search,) = finding.searches
+        # 13 rows came first: twice the least number is expected within sqrt(40 / 13) times the radius
+        assert search.radius_arcsec == pytest.approx(300.0 * (40.0 / 13.0) ** 0.5 if fault is None else 300.0)
+        assert (finding.n_rows >= least) == (fault is None)

@@ -17,7 +17,7 @@ from xmatch.catalogs.resolving import ready as ready
 from xmatch.errors import InterruptedLook, MisreadError
 from xmatch.limits.coverage import Contains
 from xmatch.limits.pointings import holds
-from xmatch.plan import Step, age_s, smaller
+from xmatch.plan import Step, age_s, smaller, wider
 from xmatch.records import Pointings, Question, Reply, ReplyStatus, Rows, Search
 from xmatch.weigh import Evidence
 
@@ -77,6 +77,7 @@ def ask_due(
     now: datetime,
     *,
     again: bool = False,
+    least_rows: int = 0,
 ) -> Asked:
     """Ask, and store each search the moment it is complete.
 
@@ -92,6 +93,8 @@ def ask_due(
         For the age of whole lists.
     again : bool
         Fetch lists again, whatever their age.
+    least_rows : int
+        A survey that covers the position with fewer rows around it is asked once more over a wider cone.
 
     Returns
     -------
@@ -127,6 +130,8 @@ def ask_due(
                 question = narrower
                 reply = ask(question, transport)
                 keeper.keep(reply)
+        for reply in ask_all(keeper.too_few(least_rows), transport):
+            keeper.keep_wider(reply)
         for step in steps:
             if (step.catalog.id, step.table.name) not in keeper.done:
                 keeper.keep(local_reply(step, _fresh_list(step, store, now, any_age=True)))
@@ -173,6 +178,27 @@ class _Keeper:
         self.done[place] = self.store.put_search(self.run_id, self.target_id, reply, rows, pointings)
         if self.progress is not None:
             self.progress(step.catalog.id, str(reply.status))
+
+    def too_few(self, least_rows: int) -> list[Question]:
+        """Questions over wider cones, where a survey that covers the position gave too few rows for a density."""
+        found = []
+        for place, search in self.done.items():
+            step = self.by_table[place]
+            question = replace(step.question, radius_arcsec=search.radius_arcsec)
+            covers = bool(step.catalog.coverage.contains(question.ra_deg, question.dec_deg))
+            asked_by_cone = not (step.is_log or _is_list(step) or step.catalog.is_object_list)
+            if search.status is ReplyStatus.WHOLE and asked_by_cone and covers:
+                further = wider(question, search.n_rows, least_rows)
+                found += [further] if further is not None else []
+        return found
+
+    def keep_wider(self, reply: Reply) -> None:
+        """Keep the wider cone where it is whole; a failure takes nothing from the narrower one."""
+        place = (reply.question.catalog_id, reply.question.table)
+        narrower = self.done[place]
+        self.keep(reply)
+        if self.done[place].status is not ReplyStatus.WHOLE:
+            self.done[place] = narrower
 
     def keep_list(self, reply: Reply) -> None:
         """Keep a whole list, then what of it lies in the cone; a failure is kept as the failure of this search."""

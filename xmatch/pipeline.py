@@ -97,7 +97,8 @@ def look(
     how = {"offline": options.offline, "again": options.again}
     due = [step for step in plan if step.ask]
     run_id = store.begin_run(target_id, __version__, how) if due else NO_RUN
-    asked = ask_due(due, run_id, target_id, store, transport, progress, now(), again=options.again)
+    asked = ask_due(due, run_id, target_id, store, transport, progress, now(), again=options.again,
+                    least_rows=assumptions.density_min_rows)  # fmt: skip
     evidence = gather(plan, asked, catalogs, store, now())
     answer = conclude(
         target,

@@ -21,6 +21,10 @@ SAME_CENTRE_ARCSEC = 0.1
 """A stored cone answers a new one only when its centre agrees this well (our choice)."""
 LEAST_SIGMA_ARCSEC = 1.0
 """Catalog errors and frames make a cone below a few arcsec meaningless (our choice)."""
+WIDEST_ARCSEC = 5.0 * 3600.0
+"""No cone is made wider than this (our choice: the widest that a catalog file may ask for)."""
+MOST_GROWTH, AIM = 4.0, 2.0
+"""A cone with too few rows grows so that twice the least number is expected, at most fourfold (our choice)."""
 DENSITY_RING = 4.0
 """The cone reaches at least this many times the compatible radius, so that a ring is left for the density."""
 
@@ -133,6 +137,24 @@ def smaller(question: Question, least_radius: float) -> Question | None:
     """Return the same question over half the radius, or None when that could miss the counterpart."""
     radius = question.radius_arcsec / 2.0
     return replace(question, radius_arcsec=radius) if radius >= least_radius else None
+
+
+def wider(question: Question, n_rows: int, least_rows: int) -> Question | None:
+    """Return the same question over a cone wide enough for some tens of rows, None where it is wide enough already.
+
+    Parameters
+    ----------
+    question : Question
+        What was asked.
+    n_rows : int
+        Rows that it brought.
+    least_rows : int
+        Rows from which a density is believed.
+    """
+    if n_rows >= least_rows or question.radius_arcsec >= WIDEST_ARCSEC:
+        return None
+    growth = min(MOST_GROWTH, (AIM * least_rows / max(n_rows, 1)) ** 0.5)
+    return replace(question, radius_arcsec=min(WIDEST_ARCSEC, growth * question.radius_arcsec))
 
 
 def age_s(search: Search, now: datetime) -> float:

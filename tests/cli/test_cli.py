@@ -99,9 +99,12 @@ def test_the_position_is_echoed_in_both_notations_before_anything_is_asked(archi
     shown = [block for block in done.stdout.split("\n\n") if block.startswith(("GET ", "POST "))]
     looked = run("look", HERE, "--json", BLANKFIELD_ARCHIVES=archive.address)
     assert looked.returncode == 0, looked.stderr
-    assert len(archive.requests) == len(shown)
-    asked = sorted(request.body.splitlines()[0] for request in archive.requests if request.body.startswith("-source"))
-    assert asked == sorted(line for line in done.stdout.splitlines() if line.startswith("-source"))
+    asked = [request.body.splitlines()[0] for request in archive.requests if request.body.startswith("-source")]
+    told = [line for line in done.stdout.splitlines() if line.startswith("-source")]
+    # what is shown is asked first; a survey that gave too few rows is asked once more over a wider cone
+    assert sorted(asked[: len(told)]) == sorted(told)
+    assert asked[len(told) :] == ["-source=VIII/113/catalog2"]
+    assert len(archive.requests) == len(shown) + 1
 
 
 def test_look_answers_and_a_second_look_needs_no_archive(archive: Any) -> None:
