@@ -170,6 +170,8 @@ class Band:
     depth_source: str = ""
     flux_scale_error: float = 0.0
     source: str = ""
+    exposures: str = ""
+    """Name of the exposures behind it, where several catalogs are made from them: such limits are not independent."""
 
     @property
     def label(self) -> str:

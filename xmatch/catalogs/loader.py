@@ -120,7 +120,7 @@ class _Reader(Checked):
             (
                 "id", "title", "waveband", "release", "refresh", "cite", "acknowledgement", "source", "notes",
                 "tables", "columns", "epoch", "bands", "drop", "coverage", "neighbourhood", "instrument", "state",
-                "mirror", "control",
+                "mirror", "control", "exposures",
             ),
         )  # fmt: skip
         catalog_id = self.text("", top, "id")
@@ -421,6 +421,7 @@ class _Reader(Checked):
                 depth_source=f"{depth['source']}{holds}" if depth else "",
                 flux_scale_error=self.number(where, band, "flux_scale_error", low=0.0, high=1.0, default=0.0),
                 source=source,
+                exposures=str(self.content.get("exposures", "")),
             ),
             value=self.maybe_text(where, band, "value"),
             error=self.maybe_text(where, band, "error"),

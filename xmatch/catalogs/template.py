@@ -21,6 +21,7 @@ release = "1"                     # a new release makes every target due again
 refresh = "frozen"                # how often it changes: frozen, yearly, monthly, rolling
 state = "needs check"             # leave this line out once you have confirmed the columns yourself; until then looks pass
                                   # the catalog over, and a good `blankfield catalogs check` unlocks it
+# exposures = "My telescope"      # where another catalog is made from the same images: their limits are not independent
 cite = ["bibcode or DOI"]
 acknowledgement = "We used my survey."
 source = "from memory"

@@ -8,7 +8,7 @@ import numpy as np
 
 from xmatch.assumptions import Assumptions
 from xmatch.classes.draws import Draws, middle
-from xmatch.classes.evidence import Applied, Evidence, joint_miss, set_aside, sorted_out, span, span_kpc
+from xmatch.classes.evidence import Applied, Evidence, exposures_of, joint_miss, set_aside, sorted_out, span, span_kpc
 from xmatch.classes.model import MagnitudeTable, Prediction, TemplateBand
 from xmatch.classes.rotation_tests import NO_DISTANCE
 from xmatch.classes.survival import miss_probability
@@ -92,7 +92,7 @@ def companion_magnitudes(prediction: Prediction, evidence: Evidence, draws: Draw
         flux = np.nan_to_num(_to_jy(apparent, known))  # a type without a magnitude here cannot be seen here
         misses.append(
             (
-                limit.limit.band.catalog_id,
+                exposures_of(limit),
                 miss_probability(flux, limit.flux_density_jy or 0.0, limit.limit.n_sigma, limit.limit.confidence),
             )
         )

@@ -72,17 +72,22 @@ def set_aside(limits: Sequence[PhysicalLimit]) -> str:
     return "; not used: " + ", ".join(f"{limit.limit.band.label} ({limit.limit.flag})" for limit in flagged)
 
 
-def joint_miss(misses: Sequence[tuple[str, Floats]], n: int) -> Floats:
-    """Probability that every catalog missed the source, from (catalog, miss probability) pairs.
+def exposures_of(limit: PhysicalLimit) -> str:
+    """Which exposures a limit rests on: those its catalog file names, or the catalog's own."""
+    return limit.limit.band.exposures or limit.limit.band.catalog_id
 
-    Bands of one catalog share its images, so the smallest of their probabilities counts once; catalogs are independent
-    and multiply.
+
+def joint_miss(misses: Sequence[tuple[str, Floats]], n: int) -> Floats:
+    """Probability that every set of exposures missed the source, from (exposures, miss probability) pairs.
+
+    Bands of one catalog, and catalogs made from the same exposures, share what they saw, so the smallest of their
+    probabilities counts once; the others are independent and multiply.
     """
-    by_catalog: dict[str, Floats] = {}
-    for catalog, miss in misses:
-        by_catalog[catalog] = np.minimum(by_catalog[catalog], miss) if catalog in by_catalog else miss
+    by_exposures: dict[str, Floats] = {}
+    for name, miss in misses:
+        by_exposures[name] = np.minimum(by_exposures[name], miss) if name in by_exposures else miss
     together = np.ones(n)
-    for miss in by_catalog.values():
+    for miss in by_exposures.values():
         together = together * miss
     return together
 

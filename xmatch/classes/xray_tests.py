@@ -8,7 +8,7 @@ from collections.abc import Callable, Sequence
 import numpy as np
 
 from xmatch.classes.draws import Draws, middle
-from xmatch.classes.evidence import Applied, Evidence, joint_miss, set_aside, sorted_out, span, span_kpc
+from xmatch.classes.evidence import Applied, Evidence, exposures_of, joint_miss, set_aside, sorted_out, span, span_kpc
 from xmatch.classes.model import Prediction
 from xmatch.classes.rotation_tests import NO_DISTANCE, NO_SPIN, isotropic_log10, say_power
 from xmatch.classes.survival import miss_probability
@@ -183,7 +183,7 @@ def _against_limits(
     for limit in limits:
         flux = arriving(edges_kev(limit.limit.band))
         miss = miss_probability(flux, limit.flux_cgs, limit.limit.n_sigma, limit.limit.confidence)
-        misses.append((limit.limit.band.catalog_id, miss))
+        misses.append((exposures_of(limit), miss))
         low, high = middle(flux)
         compared.append(
             f"{low:.1e} to {high:.1e} erg/s/cm^2 (5-95 %) in {limit.limit.band.label} against < {limit.flux_cgs:.1e} "
